@@ -1,0 +1,115 @@
+package publish
+
+import (
+	"io"
+	"io/fs"
+	"os"
+)
+
+// An FS is the handful of operations on a filesystem that publication stands
+// on. [OS] is the real one; tests put faults in its place.
+type FS interface {
+	Create(path string) (File, error)       // for reading and writing; fails if path exists
+	Open(path string) (File, error)         // for reading; follows symbolic links
+	Rename(from, to string) error           // replaces to
+	RenameNew(from, to string) error        // fails with fs.ErrExist rather than replace to
+	Remove(path string) error               // a file, not a directory
+	Mkdir(path string) error                // one directory
+	SyncDir(path string) error              // makes creations, renames and removals in it durable
+	Lstat(path string) (fs.FileInfo, error) // does not follow symbolic links
+	ReadDir(path string) ([]string, error)  // names, in any order
+	Scratch(dir string) (*os.File, error)   // a nameless file on the same filesystem
+}
+
+// A File is an open file of an [FS].
+type File interface {
+	io.Writer
+	io.ReaderAt
+	io.WriterAt
+	io.Closer
+	Sync() error
+	Stat() (fs.FileInfo, error)
+
+	// CopyRange appends n bytes of src from off. It returns how many it
+	// wrote, and an error if that is less than n.
+	CopyRange(src *os.File, off, n int64) (int64, error)
+}
+
+// OS is the filesystem of the operating system.
+var OS FS = osFS{}
+
+type osFS struct{}
+
+func (osFS) Create(path string) (File, error) {
+	f, err := os.OpenFile(path, os.O_RDWR|os.O_CREATE|os.O_EXCL, 0o666)
+	if err != nil {
+		return nil, err
+	}
+	return osFile{f}, nil
+}
+
+func (osFS) Open(path string) (File, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	return osFile{f}, nil
+}
+
+func (osFS) Rename(from, to string) error           { return os.Rename(from, to) }
+func (osFS) RenameNew(from, to string) error        { return renameNew(from, to) }
+func (osFS) Remove(path string) error               { return removeFile(path) }
+func (osFS) Mkdir(path string) error                { return os.Mkdir(path, 0o777) }
+func (osFS) Lstat(path string) (fs.FileInfo, error) { return os.Lstat(path) }
+
+func (osFS) ReadDir(path string) ([]string, error) {
+	d, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer d.Close()
+	return d.Readdirnames(-1)
+}
+
+func (osFS) SyncDir(path string) error {
+	d, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer d.Close()
+	if err := d.Sync(); err != nil && !cannotSyncDir(err) {
+		return err
+	}
+	return nil
+}
+
+func (osFS) Scratch(dir string) (*os.File, error) {
+	f, err := os.OpenFile(temporaryPath(dir), os.O_RDWR|os.O_CREATE|os.O_EXCL, 0o600)
+	if err != nil {
+		return nil, err
+	}
+	if err := os.Remove(f.Name()); err != nil {
+		f.Close()
+		return nil, err
+	}
+	return f, nil
+}
+
+type osFile struct{ *os.File }
+
+func (f osFile) CopyRange(src *os.File, off, n int64) (int64, error) {
+	done, err := copyInKernel(f.File, src, off, n)
+	if err != nil || done == n {
+		return done, err
+	}
+	// Not this kernel, or not between these filesystems.
+	rest, err := io.CopyBuffer(onlyWriter{f.File}, onlyReader{io.NewSectionReader(src, off+done, n-done)}, make([]byte, blockSize))
+	done += rest
+	if err == nil && done < n {
+		err = io.ErrUnexpectedEOF
+	}
+	return done, err
+}
+
+// onlyWriter hides ReadFrom, so that io.CopyBuffer uses the buffer it is given.
+type onlyWriter struct{ io.Writer }
