@@ -2,7 +2,8 @@ package frame
 
 import (
 	"math"
-	"strconv"
+
+	"catenrich/internal/number"
 )
 
 // RightAscension reads a right ascension from text and returns it in degrees:
@@ -81,7 +82,7 @@ func parseAngle(text []byte, units string) (p angle, ok bool) {
 	}
 	if !hasSeparator(text, units) {
 		p.fields = 1
-		p.value, ok = decimal(text)
+		p.value, ok = number.Parse(text)
 		return p, ok
 	}
 	if text[0] == '+' || text[0] == '-' {
@@ -111,7 +112,7 @@ func parseAngle(text []byte, units string) (p angle, ok bool) {
 // add takes the next field: whole units, minutes, then seconds. The last of
 // them may have decimals, which for minutes move into the seconds.
 func (p *angle) add(digits []byte) bool {
-	v, ok := decimal(digits)
+	v, ok := number.Parse(digits)
 	if !ok || p.secs != 0 || p.fields > 0 && v >= 60 || v > 360 {
 		return false
 	}
@@ -158,29 +159,6 @@ func hasSeparator(text []byte, units string) bool {
 		}
 	}
 	return false
-}
-
-// decimal reads a number in Go's float syntax, or with a D exponent; no
-// hexadecimal, no underscores, no words.
-func decimal(text []byte) (float64, bool) {
-	var buf [64]byte
-	n := copy(buf[:], text)
-	if n != len(text) {
-		return 0, false
-	}
-	for i, c := range buf[:n] {
-		switch c {
-		case 'd', 'D':
-			buf[i] = 'e'
-		case '+', '-', '.', 'e', 'E':
-		default:
-			if !isDigit(c) {
-				return 0, false
-			}
-		}
-	}
-	v, err := strconv.ParseFloat(string(buf[:n]), 64)
-	return v, err == nil
 }
 
 func isDigit(c byte) bool { return c >= '0' && c <= '9' }
