@@ -38,7 +38,7 @@ func split(a float64) (high, low float64) {
 // overflows nor underflows (Dekker 1971, with split's truncated halves, whose
 // low parts have 27 bits: the error is then right to 2^-105 of the product).
 func twoProduct(a, b float64) (product, err float64) {
-	product = a * b
+	product = float64(a * b)
 	ah, al := split(a)
 	bh, bl := split(b)
 	err = float64(ah*bh) - product

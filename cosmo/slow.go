@@ -1,0 +1,62 @@
+package cosmo
+
+import (
+	"math"
+
+	"catenrich/internal/exact"
+)
+
+// Where a model is too sharp for cells (next to a turn-around, or where dark
+// energy explodes as z nears -1) its quantities are integrated row by row. So
+// are the integrals over such an octave that the cells beyond it stand on.
+
+// slowDistance returns the integral of dz/E from z0 to z1.
+func (m *Model) slowDistance(z0, z1 float64) float64 {
+	if m.turns && (z0 < 0 || z1 < 0) {
+		return m.fromTurn(z0, z1, func(x float64) float64 { return 1 })
+	}
+	return integrate(m.e.distanceIntegrand, exact.Log1p(z0), exact.Log1p(z1))
+}
+
+// slowTime returns the integral of dz/((1+z)E) from z0 to z1.
+func (m *Model) slowTime(z0, z1 float64) float64 {
+	if m.turns && (z0 < 0 || z1 < 0) {
+		return m.fromTurn(z0, z1, func(x float64) float64 { return 1 / x })
+	}
+	return integrate(m.e.timeIntegrand, exact.Log1p(z0), exact.Log1p(z1))
+}
+
+// fromTurn integrates weight(x)/E where E falls to zero as sqrt(x - x0): over s
+// with x = x0 + s^2, with E^2 as its rise from x0.
+func (m *Model) fromTurn(z0, z1 float64, weight func(x float64) float64) float64 {
+	integrand := func(s float64) float64 {
+		d := float64(s * s)
+		return 2 * s * weight(m.startX+d) / math.Sqrt(m.e.rise(m.startX, d))
+	}
+	return integrate(integrand, math.Sqrt(z0-m.turnAround), math.Sqrt(z1-m.turnAround))
+}
+
+// slowRate returns E.
+func (m *Model) slowRate(z float64) float64 {
+	if m.turns && z < 0 {
+		return math.Sqrt(m.e.rise(m.startX, z-m.turnAround))
+	}
+	return math.Sqrt(m.e.squared(1 + z))
+}
+
+// slowDrift returns (1+z) - E = ((1+z)^2 - E^2)/((1+z) + E) without
+// cancellation.
+func (m *Model) slowDrift(z float64) float64 {
+	return (float64(z*(2+z)) - m.e.rise(1, z)) / ((1 + z) + m.slowRate(z))
+}
+
+// slowAge returns the age at z.
+func (m *Model) slowAge(z float64) float64 {
+	switch {
+	case !m.aging:
+		return math.NaN()
+	case z >= 0:
+		return m.ageFrom(exact.Log1p(z))
+	}
+	return m.past.scalars().age - m.slowTime(0, z)
+}
