@@ -30,20 +30,46 @@ func ParseWavelengthUnit(name string) (u WavelengthUnit, ok bool) {
 // A Spectrum is an SED: flux per unit wavelength (f_lambda, any unit), linear
 // between its points. Wavelengths are in Angstrom, rising.
 type Spectrum struct {
-	Name       string // for messages
-	wave, flux []float64
+	Name              string // for messages
+	wave, flux, slope []float64
+}
+
+func newSpectrum(name string, wave, flux []float64) *Spectrum {
+	return &Spectrum{Name: name, wave: wave, flux: flux, slope: slopes(wave, flux)}
+}
+
+// slopes returns those of the straight lines between points.
+func slopes(x, y []float64) []float64 {
+	s := make([]float64, len(x)-1)
+	for i := range s {
+		s[i] = (y[i+1] - y[i]) / (x[i+1] - x[i])
+	}
+	return s
 }
 
 // A Bandpass is the response of a band, linear between its points and zero
 // outside them.
 type Bandpass struct {
-	Name string // for messages
-	wave []float64
-	resp []float64
+	Name              string // for messages
+	wave, resp, slope []float64
 
 	// energy is set where the response is to energy, so that the photon
 	// efficiency is resp/lambda.
 	energy bool
+}
+
+// newBandpass drops zeros at the ends: they say nothing, and an SED need not
+// cover them. Not all of resp is zero.
+func newBandpass(name string, wave, resp []float64, energy bool) *Bandpass {
+	first, last := 0, len(resp)-1
+	for resp[first] == 0 && resp[first+1] == 0 {
+		first++
+	}
+	for resp[last] == 0 && resp[last-1] == 0 {
+		last--
+	}
+	wave, resp = wave[first:last+1], resp[first:last+1]
+	return &Bandpass{Name: name, wave: wave, resp: resp, slope: slopes(wave, resp), energy: energy}
 }
 
 // ParseSpectrum reads an SED from the text of a file: wavelength and flux
@@ -55,7 +81,7 @@ func ParseSpectrum(name string, data []byte, unit WavelengthUnit) (*Spectrum, er
 	if err != nil {
 		return nil, err
 	}
-	return &Spectrum{Name: name, wave: wave, flux: flux}, nil
+	return newSpectrum(name, wave, flux), nil
 }
 
 // ParseBandpass reads a bandpass from the text of a file, in the form of
@@ -66,15 +92,7 @@ func ParseBandpass(name string, data []byte, unit WavelengthUnit, energy bool) (
 	if err != nil {
 		return nil, err
 	}
-	// Zeros at the ends say nothing, and an SED need not cover them.
-	first, last := 0, len(resp)-1
-	for resp[first] == 0 && resp[first+1] == 0 {
-		first++
-	}
-	for resp[last] == 0 && resp[last-1] == 0 {
-		last--
-	}
-	return &Bandpass{Name: name, wave: wave[first : last+1], resp: resp[first : last+1], energy: energy}, nil
+	return newBandpass(name, wave, resp, energy), nil
 }
 
 // parsePoints reads wavelengths and values that are not negative and not all
@@ -161,19 +179,16 @@ func (b *Bandpass) integral(s *Spectrum, x float64) (value, slope float64) {
 // the band and between the redshifted points i and i+1 of the spectrum.
 func (b *Bandpass) cell(s *Spectrum, i, j int, left, right, x float64) (value, slope float64) {
 	mid := 0.5 * (left + right)
-	df := (s.flux[i+1] - s.flux[i]) / (s.wave[i+1] - s.wave[i])
-	dr := (b.resp[j+1] - b.resp[j]) / (b.wave[j+1] - b.wave[j])
-	weight := func(w float64) float64 {
-		r := b.resp[j] + float64(dr*(w-b.wave[j]))
-		if b.energy {
-			return r
-		}
-		return r * w
+	df, dr := s.slope[i], b.slope[j]
+	f := func(w float64) float64 { return s.flux[i] + float64(df*(w-s.wave[i])) }
+	r := func(w float64) float64 { return b.resp[j] + float64(dr*(w-b.wave[j])) }
+	wl, wm, wr := r(left), 4*r(mid), r(right)
+	if !b.energy {
+		wl, wm, wr = left*wl, mid*wm, right*wr
 	}
-	flux := func(w float64) float64 { return s.flux[i] + float64(df*(w/x-s.wave[i])) }
-	wl, wm, wr := weight(left), 4*weight(mid), weight(right)
+	fl, fr := f(left/x), f(right/x)
 	h := (right - left) / 6
-	value = float64(h * (float64(wl*flux(left)) + float64(wm*flux(mid)) + float64(wr*flux(right))))
+	value = float64(h * (float64(wl*fl) + float64(wm*0.5*(fl+fr)) + float64(wr*fr)))
 	slope = float64(-h * (df / x) * (float64(wl*left) + float64(wm*mid) + float64(wr*right)))
 	return value, slope
 }

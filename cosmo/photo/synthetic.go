@@ -35,7 +35,7 @@ type Synthesis struct {
 // integrals count photons). It is tabulated when it is made: a piecewise cubic
 // in 1+z that has the value and the slope of the integral at the ends of each
 // piece. Pieces are halved until the cubic agrees with the integral at three
-// points inside each to 2e-7 mag, or, where that takes more than 64 pieces to
+// points inside each to 2e-7 mag, or, where that takes more than 16 pieces to
 // 1/64 octave, to 2e-5 mag (TestSyntheticAccuracy tries points in between).
 type Synthetic struct {
 	lo, hi float64 // range of x = 1+z
@@ -61,7 +61,7 @@ func cellStart(c uint64) float64 { return math.Float64frombits(c << (52 - cellBi
 const (
 	goodEnough = 2e-7 // mag
 	atWorst    = 2e-5 // mag, where goodEnough takes too many pieces
-	manyPieces = 64
+	manyPieces = 16
 	maxPieces  = 1024
 
 	// faintest is a K beyond which the SED has, to say it plainly, no flux in

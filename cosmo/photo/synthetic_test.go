@@ -15,16 +15,16 @@ import (
 
 // sampled makes an SED of a function at n wavelengths, equal steps in ln λ.
 func sampled(name string, from, to float64, n int, f func(w float64) float64) *Spectrum {
-	s := &Spectrum{Name: name}
+	wave, flux := make([]float64, n), make([]float64, n)
 	for i := range n {
-		w := from * math.Pow(to/from, float64(i)/float64(n-1))
-		s.wave, s.flux = append(s.wave, w), append(s.flux, f(w))
+		wave[i] = from * math.Pow(to/from, float64(i)/float64(n-1))
+		flux[i] = f(wave[i])
 	}
-	return s
+	return newSpectrum(name, wave, flux)
 }
 
 func topHat(from, to float64, energy bool) *Bandpass {
-	return &Bandpass{Name: fmt.Sprintf("%g to %g", from, to), wave: []float64{from, to}, resp: []float64{1, 1}, energy: energy}
+	return newBandpass(fmt.Sprintf("%g to %g", from, to), []float64{from, to}, []float64{1, 1}, energy)
 }
 
 func mustSynthetic(t testing.TB, s Synthesis) *Synthetic {
@@ -40,10 +40,10 @@ func mustSynthetic(t testing.TB, s Synthesis) *Synthetic {
 // integrand of a sampled power law is exact but for the sampling, so K is
 // compared with the power law's own formula to 1e-6 mag.
 func TestSyntheticOfPowerLaw(t *testing.T) {
-	for _, alpha := range []float64{-2.5, -1, -0.5, 0.3, 1} {
-		sed := sampled("power law", 900, 12000, 20000, func(w float64) float64 { return math.Pow(w/5000, -2-alpha) })
+	for _, alpha := range []float64{-2.5, -0.5, 1} {
+		sed := sampled("power law", 900, 12000, 5000, func(w float64) float64 { return math.Pow(w/5000, -2-alpha) })
 		for _, energy := range []bool{false, true} {
-			for _, rest := range []float64{0, 0.1, 0.7} {
+			for _, rest := range []float64{0, 0.7} {
 				k := mustSynthetic(t, Synthesis{SED: sed, Band: topHat(5500, 7000, energy), RestRedshift: rest})
 				law := PowerLaw{Alpha: alpha, Rest: rest}
 				for z := 0.0; z < 5; z += 0.0137 {
@@ -74,7 +74,7 @@ func blackBody(w, temperature float64) float64 {
 // band, against gonum's quadrature of the black body itself.
 func TestSyntheticOfBlackBody(t *testing.T) {
 	const temperature = 5800
-	sed := sampled("black body", 1500, 12000, 30000, func(w float64) float64 { return blackBody(w, temperature) })
+	sed := sampled("black body", 1500, 12000, 12000, func(w float64) float64 { return blackBody(w, temperature) })
 	photons := func(a, b, x float64, f func(float64) float64) float64 {
 		return quad.Fixed(func(w float64) float64 { return w * f(w/x) }, a, b, 200, nil, 0)
 	}
@@ -110,19 +110,20 @@ func unkind(rng *rand.Rand) *Spectrum {
 		i := rng.IntN(len(s.flux))
 		s.flux[i] += 400 * rng.Float64() // one point wide
 	}
-	return s
+	return newSpectrum(s.Name, s.wave, s.flux)
 }
 
 // The promise of Synthetic: below 1e-4 mag for any SED, at points other than
 // those where the table was made.
 func TestSyntheticAccuracy(t *testing.T) {
 	rng := rand.New(rand.NewPCG(7, 1))
-	narrow := &Bandpass{Name: "narrow", wave: []float64{6560, 6570, 6600, 6610}, resp: []float64{0, 1, 1, 0}}
-	ragged := &Bandpass{Name: "ragged"}
+	narrow := newBandpass("narrow", []float64{6560, 6570, 6600, 6610}, []float64{0, 1, 1, 0}, false)
+	var wave, resp []float64
 	for w := 5500.0; w <= 7000; w += 10 {
-		ragged.wave, ragged.resp = append(ragged.wave, w), append(ragged.resp, rng.Float64())
+		wave, resp = append(wave, w), append(resp, rng.Float64())
 	}
-	for trial := range 3 {
+	ragged := newBandpass("ragged", wave, resp, false)
+	for trial := range 2 {
 		sed := unkind(rng)
 		for _, band := range []*Bandpass{topHat(5500, 7000, false), narrow, ragged} {
 			s := &synthesis{Synthesis: Synthesis{SED: sed, Band: band, RestBand: band}}
@@ -153,7 +154,7 @@ func TestSyntheticAccuracy(t *testing.T) {
 func TestIntegral(t *testing.T) {
 	rng := rand.New(rand.NewPCG(3, 9))
 	sed := unkind(rng)
-	band := &Bandpass{Name: "b", wave: []float64{5000, 5200, 5900, 6000}, resp: []float64{0, 0.8, 0.5, 0.1}}
+	band := newBandpass("b", []float64{5000, 5200, 5900, 6000}, []float64{0, 0.8, 0.5, 0.1}, false)
 	lin := func(xs, ys []float64, x float64) float64 {
 		for i := 1; i < len(xs); i++ {
 			if x <= xs[i] {

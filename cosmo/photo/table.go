@@ -23,15 +23,13 @@ func NewTable(z, k []float64) (*Table, error) {
 	if len(z) < 2 {
 		return nil, fault.Config.Errorf("a K table of %d rows, want at least 2", len(z))
 	}
-	t := &Table{z: z, k: k, slope: make([]float64, len(z)-1)}
+	t := &Table{z: z, k: k}
 	for i := range z {
 		if i > 0 && !(z[i] > z[i-1]) || !(z[i] > -1) || z[i] > math.MaxFloat64 || k[i]-k[i] != 0 {
 			return nil, fault.Config.Errorf("K table, row %d: z = %v, K = %v: redshifts must rise and be above -1, and both be finite", i+1, z[i], k[i])
 		}
-		if i > 0 {
-			t.slope[i-1] = (k[i] - k[i-1]) / (z[i] - z[i-1])
-		}
 	}
+	t.slope = slopes(z, k)
 	t.makeGuide()
 	return t, nil
 }
