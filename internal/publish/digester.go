@@ -72,7 +72,7 @@ func (d *digester) run() {
 }
 
 // hashRange adds n bytes of f from off to h.
-func hashRange(h hash.Hash, f *os.File, off, n int64) error {
+func hashRange(h hash.Hash, f io.ReaderAt, off, n int64) error {
 	block := blocks.Get().(*[]byte)
 	defer blocks.Put(block)
 	buf := (*block)[:cap(*block)]

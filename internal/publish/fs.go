@@ -111,5 +111,9 @@ func (f osFile) CopyRange(src *os.File, off, n int64) (int64, error) {
 	return done, err
 }
 
-// onlyWriter hides ReadFrom, so that io.CopyBuffer uses the buffer it is given.
-type onlyWriter struct{ io.Writer }
+// onlyWriter and onlyReader hide ReadFrom and WriteTo, so that io.CopyBuffer
+// uses the buffer it is given.
+type (
+	onlyWriter struct{ io.Writer }
+	onlyReader struct{ io.Reader }
+)

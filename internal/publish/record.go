@@ -117,15 +117,8 @@ func Quick(f io.ReaderAt, size int64) (Digest, error) {
 // Full returns the SHA-256 of the first size bytes of f, read from the start.
 func Full(f io.ReaderAt, size int64) (Digest, error) {
 	h := sha256.New()
-	n, err := io.CopyBuffer(h, onlyReader{io.NewSectionReader(f, 0, size)}, make([]byte, blockSize))
-	if err == nil && n < size {
-		err = io.ErrUnexpectedEOF
-	}
-	if err != nil {
+	if err := hashRange(h, f, 0, size); err != nil {
 		return Digest{}, err
 	}
 	return Digest(h.Sum(nil)), nil
 }
-
-// onlyReader hides WriteTo, so that io.CopyBuffer uses the buffer it is given.
-type onlyReader struct{ io.Reader }

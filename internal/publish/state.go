@@ -24,7 +24,7 @@ func ManifestPath(target string) string { return target + ".manifest.json" }
 func PendingPath(target string) string { return target + ".manifest.pending" }
 
 // maxManifest bounds what is read into memory on the word of a file's name.
-const maxManifest = 256 << 20
+const maxManifest = 64 << 20
 
 // A State is what stands under an output's name and beside it.
 type State struct {
