@@ -8,6 +8,7 @@ package table
 
 import (
 	"fmt"
+	"math"
 	"sort"
 	"strings"
 
@@ -166,4 +167,31 @@ func Quote(names []string) string {
 		return strings.Join(quoted[:n-1], ", ") + " and " + quoted[n-1]
 	}
 	return strings.Join(quoted, "")
+}
+
+// Round returns v as a column of type t would hold it, so that a sentinel
+// written in decimal can be compared with what the file holds.
+func (t Type) Round(v float64) float64 {
+	switch t {
+	case Float32:
+		return float64(float32(v))
+	case Float16:
+		return roundHalf(v)
+	}
+	return v
+}
+
+// roundHalf rounds to the nearest IEEE 754 binary16, ties to even: 11
+// significant bits, exponents from -14 (below it the spacing stays 2^-24).
+func roundHalf(v float64) float64 {
+	if v == 0 || math.IsNaN(v) || math.IsInf(v, 0) {
+		return v
+	}
+	_, exponent := math.Frexp(v) // |v| in [2^(exponent-1), 2^exponent)
+	unit := math.Ldexp(1, max(exponent-11, -24))
+	rounded := math.RoundToEven(v/unit) * unit
+	if math.Abs(rounded) > 65504 {
+		return math.Inf(int(math.Copysign(1, v)))
+	}
+	return rounded
 }

@@ -16,6 +16,7 @@ type Chunk struct {
 	Raw      []byte
 	Line     int64 // line of Raw's first byte, from 1, where the format has lines
 	Offset   int64 // of Raw's first byte in the uncompressed input
+	Consumed int64 // bytes of the input file read so far, for progress
 	Cols     any   // what its Source needs to Decode it; nobody else looks
 }
 

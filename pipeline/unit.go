@@ -1,0 +1,404 @@
+package pipeline
+
+import (
+	"bytes"
+	"context"
+	"encoding/csv"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"strconv"
+	"strings"
+	"time"
+
+	"catenrich/internal/fault"
+	"catenrich/internal/publish"
+	"catenrich/internal/table"
+	"catenrich/pipeline/columns"
+	"catenrich/pipeline/job"
+	"catenrich/pipeline/ledger"
+)
+
+// rejectsSuffix names the sidecar of records that have no row.
+const rejectsSuffix = ".rejects.csv"
+
+// maxNotes bounds the bad cells that an outcome tells of.
+const maxNotes = 3
+
+// unit does one unit.
+func (r *runner) unit(ctx context.Context, u *Unit, workers int) (o Outcome) {
+	start := time.Now()
+	o.Unit = u
+	err := guard(func() error { return r.publishUnit(ctx, u, workers, &o) })
+	if err != nil {
+		o.Result, o.Err = Failed, err
+	}
+	o.Elapsed = time.Since(start)
+	return o
+}
+
+// publishUnit skips a unit that is up to date, or makes its output.
+func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outcome) error {
+	if u.Output == Standard {
+		return r.streamUnit(ctx, u, workers, o)
+	}
+	if done, err := r.upToDate(u, o); done || err != nil {
+		return err
+	}
+	src, err := r.open(u)
+	if err != nil {
+		return err
+	}
+	defer src.Close()
+	work, err := r.prepare(u, src, workers, o)
+	if err != nil {
+		return err
+	}
+	lock, err := r.lock(ctx, u)
+	if err != nil {
+		return err
+	}
+	defer lock.Release()
+	if done, err := r.upToDate(u, o); done || err != nil {
+		return err // another run did it while this one waited
+	}
+	if err := publish.Sweep(r.options.FS, filepath.Dir(u.Output)); err != nil {
+		return err
+	}
+	release, err := publish.Begin(r.options.FS, u.Output, publish.Options{Replace: r.options.Replace})
+	if err != nil {
+		return err
+	}
+	defer release.Abort()
+	if err := work.into(ctx, release); err != nil {
+		return err
+	}
+	return release.Commit(work.manifest)
+}
+
+// streamUnit writes to standard output: no manifest, no lock, no skipping.
+func (r *runner) streamUnit(ctx context.Context, u *Unit, workers int, o *Outcome) error {
+	src, err := r.open(u)
+	if err != nil {
+		return err
+	}
+	defer src.Close()
+	work, err := r.prepare(u, src, workers, o)
+	if err != nil {
+		return err
+	}
+	out := publish.NewStream(r.options.Stdout, "standard output")
+	err = work.copy(ctx, out)
+	info, finishErr := out.Finish()
+	o.Size = info.Size
+	return errors.Join(err, finishErr)
+}
+
+// open opens the unit's input.
+func (r *runner) open(u *Unit) (table.Source, error) {
+	in := &r.plan.Job.Settings.Input
+	if u.Input != Standard {
+		return u.in.Open(u.Input, in)
+	}
+	if u.in.Stream == nil {
+		return nil, fault.Config.Errorf("standard input cannot be %s: give a file", u.in.Name)
+	}
+	return u.in.Stream("standard input", r.options.Stdin, in)
+}
+
+// lock takes the lock of the unit's output.
+func (r *runner) lock(ctx context.Context, u *Unit) (*publish.Lock, error) {
+	root := filepath.Dir(u.Output)
+	for range strings.Count(u.ID, "/") {
+		if r.plan.Job.Directory != "" {
+			root = filepath.Dir(root)
+		}
+	}
+	lock, err := publish.Acquire(ctx, root, filepath.Base(u.Output), r.options.Wait)
+	if err == nil && lock.Warning != nil {
+		r.warned.Do(func() { r.watch.Warn(lock.Warning.Error()) })
+	}
+	return lock, err
+}
+
+// upToDate reports whether the output stands, made by the same job of the same
+// input; the outcome then says so.
+func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
+	if u.Input == Standard {
+		return false, nil
+	}
+	state, err := publish.Look(r.options.FS, u.Output)
+	if err != nil || !state.Whole {
+		return false, err
+	}
+	m, err := ledger.Parse(state.Manifest)
+	if err != nil || m.ConfigHash != r.plan.hash || m.Unit != u.ID {
+		return false, nil
+	}
+	same, err := r.sameFiles(u, m)
+	if err != nil || !same {
+		return false, err
+	}
+	o.Result, o.Size = UpToDate, m.Output.Size
+	o.count(&m.Tally)
+	r.watch.Advance(0, u.Size)
+	return true, nil
+}
+
+// sameFiles compares input and output with what the manifest says of them: by
+// size and quick fingerprint, or all of their bytes; and the output must not
+// be older than the input.
+func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (bool, error) {
+	in, err := os.Stat(u.Input)
+	if err != nil {
+		return false, fault.NoInput.Wrap(err)
+	}
+	out, err := os.Stat(u.Output)
+	if err != nil || out.ModTime().Before(in.ModTime()) || in.Size() != m.Input.Size {
+		return false, nil
+	}
+	for path, info := range map[string]publish.FileInfo{u.Input: m.Input.FileInfo, u.Output: m.Output.FileInfo} {
+		same, err := r.sameFile(path, info)
+		if err != nil || !same {
+			return false, err
+		}
+	}
+	return true, nil
+}
+
+func (r *runner) sameFile(path string, info publish.FileInfo) (bool, error) {
+	if !r.options.FullCheck {
+		sum, err := quick(path, info.Size)
+		return err == nil && sum == info.Quick, err
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return false, fault.NoInput.Wrap(err)
+	}
+	defer f.Close()
+	sum, err := publish.Full(f, info.Size)
+	return err == nil && sum == info.SHA256, fault.IO.Wrap(err)
+}
+
+// work is one unit while it is done.
+type work struct {
+	*runner
+	unit    *Unit
+	outcome *Outcome
+	src     table.Source
+	sink    table.Sink
+	bound   *columns.Bound
+	workers int
+	tallies []*ledger.Tally // one a worker; merged into the first
+
+	rejects  *rejects
+	numeric  []numericCheck
+	rows     int64
+	consumed int64
+}
+
+// prepare binds the job to the input's schema and makes the sink.
+func (r *runner) prepare(u *Unit, src table.Source, workers int, o *Outcome) (*work, error) {
+	w := &work{runner: r, unit: u, outcome: o, src: src, workers: workers}
+	var err error
+	if w.bound, err = r.plan.Kernel.Bind(src.Schema()); err != nil {
+		return nil, err
+	}
+	if err := src.Select(w.bound.Wants, r.plan.Kernel.Added()); err != nil {
+		return nil, err
+	}
+	newSink, ok := u.out.Sinks[u.in.Name]
+	if !ok {
+		return nil, fault.Config.Errorf("%s: %s cannot be written as %s", u.Input, u.in.Name, u.out.Name)
+	}
+	if w.sink, err = newSink(src, u.Output, r.plan.spec()); err != nil {
+		return nil, err
+	}
+	w.numeric = newNumericChecks(src.Schema(), w.bound, r.plan.Kernel.Needs())
+	for range workers {
+		w.tallies = append(w.tallies, w.plan.Kernel.NewTally())
+	}
+	return w, nil
+}
+
+// into writes output and sidecars of a release.
+func (w *work) into(ctx context.Context, release *publish.Release) error {
+	out, err := release.Create("")
+	if err != nil {
+		return err
+	}
+	w.rejects = &rejects{create: func() (table.Output, error) { return release.Create(rejectsSuffix) }}
+	if err := w.copy(ctx, out); err != nil {
+		return err
+	}
+	return w.src.Check()
+}
+
+// manifest makes the unit's manifest, once its files are durable.
+func (w *work) manifest(files publish.Record) ([]byte, error) {
+	m := &ledger.Manifest{
+		ConfigHash: w.plan.hash, Settings: w.plan.Settings, OutputVersion: job.OutputVersion, Unit: w.unit.ID, Tally: *w.tallies[0],
+	}
+	m.Set(files)
+	m.Output.Rows, m.Input.Rows = w.rows, w.rows+w.outcome.Rejects
+	size, sum := w.sink.Verbatim()
+	if size > 0 {
+		m.Verbatim = &ledger.Prefix{Size: size, SHA256: sum}
+	}
+	if own, digest, ok := w.src.Digest(); ok {
+		size, sum = own, digest
+	}
+	m.Input.FileInfo = publish.FileInfo{Size: size, SHA256: sum}
+	if w.unit.Input != Standard {
+		var err error
+		if m.Input.Quick, err = quick(w.unit.Input, size); err != nil {
+			return nil, err
+		}
+	}
+	return ledger.Encode(m)
+}
+
+// quick is the quick fingerprint of a file of known size.
+func quick(path string, size int64) (publish.Digest, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return publish.Digest{}, fault.NoInput.Wrap(err)
+	}
+	defer f.Close()
+	sum, err := publish.Quick(f, size)
+	return sum, fault.IO.Wrap(err)
+}
+
+// copy moves the rows.
+func (w *work) copy(ctx context.Context, out table.Output) error {
+	if err := w.sink.Begin(out); err != nil {
+		return err
+	}
+	if err := stream(ctx, w.src, w.workers, w.depthFor(w.workers), w.chunk, w.collect); err != nil {
+		return err
+	}
+	if err := w.finishChecks(); err != nil {
+		return err
+	}
+	if err := w.sink.Finish(); err != nil {
+		return err
+	}
+	total := w.tallies[0]
+	for _, t := range w.tallies[1:] {
+		if err := total.Merge(t); err != nil {
+			return err
+		}
+	}
+	total.Rejects = w.outcome.Rejects
+	w.outcome.Result, w.outcome.Size = Written, out.Offset()
+	w.outcome.count(total)
+	return nil
+}
+
+// chunk is a worker's part: decode, compute, count, encode.
+func (w *work) chunk(worker int, r *result) error {
+	b := w.batches.Get().(*table.Batch)
+	b.Reset(r.chunk.Rows, w.bound.Wants, w.plan.Kernel.Added())
+	if err := w.src.Decode(r.chunk, b); err != nil {
+		return err
+	}
+	scratch := w.scratch.Get().(*columns.Scratch)
+	w.bound.Run(b, scratch, w.tallies[worker])
+	w.scratch.Put(scratch)
+	piece, err := w.sink.Encode(r.chunk, b)
+	r.batch, r.piece = b, piece
+	return err
+}
+
+// collect is the ordered part: rejects, checks, and the output.
+func (w *work) collect(r *result) error {
+	defer func() {
+		w.batches.Put(r.batch)
+		w.src.Release(r.chunk)
+	}()
+	r.chunk.FirstRow = w.rows
+	for i := range r.batch.Rejects {
+		if err := w.reject(&r.batch.Rejects[i]); err != nil {
+			return err
+		}
+	}
+	for i := range w.numeric {
+		if err := w.numeric[i].see(&r.batch.In[w.numeric[i].at]); err != nil {
+			return err
+		}
+	}
+	for i := range r.batch.Cells {
+		if len(w.outcome.Cells) < maxNotes {
+			cell := r.batch.Cells[i]
+			cell.Row += w.rows
+			w.outcome.Cells = append(w.outcome.Cells, &cell)
+		}
+	}
+	if err := w.sink.Append(r.piece, r.chunk, r.batch); err != nil {
+		return fmt.Errorf("writing rows from %d: %w", w.rows+1, err)
+	}
+	w.rows += int64(r.batch.Rows)
+	w.watch.Advance(int64(r.batch.Rows), max(r.chunk.Consumed-w.consumed, 0))
+	w.consumed = max(w.consumed, r.chunk.Consumed)
+	return nil
+}
+
+// finishChecks are those that need the last row to be through.
+func (w *work) finishChecks() error {
+	for i := range w.numeric {
+		if err := w.numeric[i].end(); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// reject notes a record that has no row, and fails beyond the job's limit.
+func (w *work) reject(r *table.Reject) error {
+	o := w.outcome
+	if o.Rejects++; o.First == nil {
+		first := *r
+		o.First = &first
+	}
+	if limit := w.plan.Job.MaxRejects; o.Rejects > limit {
+		return fault.Data.Errorf("%s:%d: %s; that makes %d rejects, and %s is %d: mend the file, or raise the limit to keep the rest and find such records in %s",
+			w.unit.Input, r.Line, r.Reason, o.Rejects, w.plan.Job.Place("limits.max_rejects"), limit, w.unit.Output+rejectsSuffix)
+	}
+	if w.rejects == nil { // standard output: they go where messages go
+		_, err := fmt.Fprintf(w.options.Stderr, "catenrich: %s:%d: %s: %q\n", w.unit.Input, r.Line, r.Reason, r.Record)
+		return fault.IO.Wrap(err)
+	}
+	return w.rejects.add(w.unit.ID, r)
+}
+
+// rejects writes the sidecar of records that have no row, made when the first
+// of them comes.
+type rejects struct {
+	create func() (table.Output, error)
+	out    table.Output
+	text   bytes.Buffer
+	csv    *csv.Writer
+}
+
+// rejectsHeader names the sidecar's columns.
+var rejectsHeader = []string{"file", "line", "byte_offset", "reason", "record"}
+
+func (r *rejects) add(unit string, reject *table.Reject) error {
+	if r.out == nil {
+		out, err := r.create()
+		if err != nil {
+			return err
+		}
+		r.out, r.csv = out, csv.NewWriter(&r.text)
+		r.csv.Write(rejectsHeader)
+	}
+	r.csv.Write([]string{unit, strconv.FormatInt(reject.Line, 10), strconv.FormatInt(reject.Offset, 10), reject.Reason, string(reject.Record)})
+	r.csv.Flush()
+	if err := r.csv.Error(); err != nil {
+		return err
+	}
+	_, err := r.out.Write(r.text.Bytes())
+	r.text.Reset()
+	return err
+}
