@@ -265,7 +265,7 @@ func (s *CSV) Next(ctx context.Context) (*table.Chunk, error) {
 	if err != nil {
 		s.pending = err
 		if n == 0 {
-			s.Release(&c.Chunk)
+			s.recycle(c)
 			return nil, err
 		}
 	}
@@ -366,12 +366,13 @@ func (s *CSV) tooLong(block []byte, open int) error {
 }
 
 // Release implements [table.Source].
-func (s *CSV) Release(c *table.Chunk) {
-	k := c.Cols.(*csvChunk)
-	if cap(k.buffer) > 4*s.options.BlockSize { // of a long record: one is enough
-		return
+func (s *CSV) Release(c *table.Chunk) { s.recycle(c.Cols.(*csvChunk)) }
+
+// recycle keeps a chunk's memory, unless a long record made it large.
+func (s *CSV) recycle(c *csvChunk) {
+	if cap(c.buffer) <= 4*CSVBlockSize {
+		csvChunks.Put(c)
 	}
-	csvChunks.Put(k)
 }
 
 // Digest implements [table.Source]. Of a compressed file it is that of the

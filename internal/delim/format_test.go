@@ -3,6 +3,7 @@ package delim
 import (
 	"flag"
 	"math"
+	"math/big"
 	"math/rand/v2"
 	"strconv"
 	"strings"
@@ -145,7 +146,6 @@ func TestAppendDigits(t *testing.T) {
 	}
 }
 
-// TestLogarithms checks the integer forms against bit lengths of exact powers.
 func TestPowersAreNormalized(t *testing.T) {
 	for i, g := range powers {
 		if g.hi>>63 == 0 {
@@ -154,6 +154,34 @@ func TestPowersAreNormalized(t *testing.T) {
 	}
 	if powers[-minPower] != (power{1 << 63, 0}) {
 		t.Errorf("10^0 is %x", powers[-minPower])
+	}
+}
+
+// TestLogarithms checks the integer forms against exact powers.
+func TestLogarithms(t *testing.T) {
+	pow := func(base, e int64) *big.Rat {
+		p := new(big.Rat).SetInt(new(big.Int).Exp(big.NewInt(base), big.NewInt(max(e, -e)), nil))
+		if e < 0 {
+			p.Inv(p)
+		}
+		return p
+	}
+	floorLog := func(base int64, of *big.Rat, guess int) bool {
+		return pow(base, int64(guess)).Cmp(of) <= 0 && of.Cmp(pow(base, int64(guess)+1)) < 0
+	}
+	for q := -1074; q <= 971; q++ {
+		two := pow(2, int64(q))
+		if !floorLog(10, two, floorLog10Pow2(q)) {
+			t.Errorf("floorLog10Pow2(%d) = %d", q, floorLog10Pow2(q))
+		}
+		if !floorLog(10, two.Mul(two, big.NewRat(3, 4)), floorLog10ThreeQuartersPow2(q)) {
+			t.Errorf("floorLog10ThreeQuartersPow2(%d) = %d", q, floorLog10ThreeQuartersPow2(q))
+		}
+	}
+	for k := minPower; k <= maxPower; k++ {
+		if !floorLog(2, pow(10, int64(k)), floorLog2Pow10(k)) {
+			t.Errorf("floorLog2Pow10(%d) = %d", k, floorLog2Pow10(k))
+		}
 	}
 }
 
