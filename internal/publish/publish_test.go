@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/json"
 	"errors"
+	"fmt"
 	"os"
 	"path/filepath"
 	"strings"
@@ -19,7 +20,7 @@ func manifestOf(mark string) func(Record) ([]byte, error) {
 		return json.Marshal(struct {
 			Record
 			Mark string `json:"mark"`
-		}{r, mark})
+		}{r, fmt.Sprintf("%x", sha([]byte(mark)))})
 	}
 }
 
