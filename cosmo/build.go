@@ -1,11 +1,6 @@
 package cosmo
 
-import (
-	"math"
-	"sync"
-
-	"catenrich/internal/exact"
-)
+import "math"
 
 // smooth is the relative error up to which a cell's fit is accepted.
 const smooth = 2e-15
@@ -59,10 +54,7 @@ func (m *Model) layOctave(i int) {
 	cells, nodes := len(t.cells), len(t.nodes)
 	o.first = int32(cells)
 	for bits := leastBits; bits <= mostBits; bits++ {
-		o.shift = uint8(mantissa - bits)
-		if low < 1 {
-			o.up = 1 << o.shift
-		}
+		o.cut(bits, low >= 1)
 		count := 1 << bits
 		width := low / float64(count)
 		t.cells, t.nodes = t.cells[:cells], t.nodes[:nodes]
@@ -286,6 +278,3 @@ func (m *Model) buildDrift() {
 		copy(t.drift[c][1:], ratio[:order-1])
 	}
 }
-
-var _ = sync.Once{}
-var _ = exact.Exp

@@ -35,10 +35,21 @@ func (p *polynomial) at(t float64) float64 {
 
 // An octave says where its cells are.
 type octave struct {
+	mask  uint64 // of the bits of the cell's lower edge
+	up    uint64 // added to them to give the edge nearest z = 0
 	first int32  // index of its first cell
 	shift uint8  // mantissa bits below those that count cells
 	slow  bool   // no cells: too sharp a model, quantities are integrated row by row
-	up    uint64 // added to the lower edge's bits to give the edge nearest z = 0
+}
+
+// cut sets the number of cells to 2^bits.
+func (o *octave) cut(bits int, past bool) {
+	o.shift = uint8(mantissa - bits)
+	o.mask = ^uint64(1<<o.shift - 1)
+	o.up = 0
+	if !past {
+		o.up = 1 << o.shift
+	}
 }
 
 // tables are the cells of a model. Cell 0 lies nowhere and holds NaN.
@@ -65,19 +76,21 @@ type pastTables = tables
 // negative for z < 0.
 type span struct{ edge, width float64 }
 
-// locate returns the cell of z and t. An octave without cells gives cell -1.
+// locate returns the cell of z and t, for z anywhere between the ends of the
+// cells. An octave without cells gives cell -1.
 func (t *tables) locate(z float64) (cell int32, local float64) {
-	if !(z > t.lowest && z <= MaxRedshift) {
-		return 0, math.NaN()
-	}
 	b := math.Float64bits(1 + z)
-	o := &t.octaves[(b>>mantissa)-(1023+firstOctave)]
+	o := &t.octaves[b>>mantissa-(1023+firstOctave)]
 	if o.slow {
 		return -1, z
 	}
-	cell = o.first + int32(b&(1<<mantissa-1)>>o.shift)
-	edge := math.Float64frombits(b&^(1<<o.shift-1) + o.up)
-	return cell, z - (edge - 1)
+	return o.find(b, z)
+}
+
+// find is locate within an octave; b is the bits of 1+z.
+func (o *octave) find(b uint64, z float64) (cell int32, local float64) {
+	edge := math.Float64frombits(b&o.mask + o.up)
+	return o.first + int32(b&(1<<mantissa-1)>>(o.shift&63)), z - (edge - 1)
 }
 
 // chebyshev holds the nodes of a cell as fractions of its width, and the
@@ -88,10 +101,9 @@ var chebyshev = func() (c struct {
 	monomial  [order][order]float64 // [k][i]: coefficient of s^i in T_k(2s-1)
 }) {
 	for j := range order {
-		angle := math.Pi * (float64(j) + 0.5) / order
-		c.node[j] = 0.5 * (1 + exact.Cos(angle))
+		c.node[j] = 0.5 * (1 + cosSixteenth(2*j+1))
 		for k := range order {
-			c.transform[k][j] = 2.0 / order * exact.Cos(float64(k)*angle)
+			c.transform[k][j] = 2.0 / order * cosSixteenth(k*(2*j+1))
 		}
 		c.transform[0][j] = 1.0 / order
 	}
@@ -109,16 +121,33 @@ var chebyshev = func() (c struct {
 	return c
 }()
 
+// cosSixteenth returns cos(pi n/16) with the symmetry of the cosine exactly.
+func cosSixteenth(n int) float64 {
+	n %= 32
+	switch {
+	case n > 16:
+		return cosSixteenth(32 - n)
+	case n > 8:
+		return -cosSixteenth(16 - n)
+	case n == 8:
+		return 0
+	}
+	return exact.Cos(math.Pi / 16 * float64(n))
+}
+
 // A fit is the Chebyshev coefficients of a function over a cell.
 type fit [order]float64
 
-// newFit fits the values at the nodes.
+// newFit fits the values at the nodes. It works on their differences from one
+// of them, which keeps the rounding errors small.
 func newFit(values *[order]float64) (f fit) {
+	base := values[order/2]
 	for k := range order {
 		for j, v := range values {
-			f[k] += float64(chebyshev.transform[k][j] * v)
+			f[k] += float64(chebyshev.transform[k][j] * (v - base))
 		}
 	}
+	f[0] += base
 	return f
 }
 

@@ -63,13 +63,19 @@ func (m *Model) locate(b *Base) {
 	b.X, b.t, b.cell, b.slow = grow(b.X, n), grow(b.t, n), grow(b.cell, n), b.slow[:0]
 	x, local, cells := b.X[:n], b.t[:n], b.cell[:n]
 	t := &m.past
+	lowest := t.lowest
 	for i, z := range b.Z {
-		c, l := t.locate(z)
-		if c < 0 {
-			b.slow = append(b.slow, int32(i))
-			c = 0
+		x[i], local[i], cells[i] = 1+z, math.NaN(), 0
+		if !(z > lowest && z <= MaxRedshift) {
+			continue
 		}
-		x[i], local[i], cells[i] = 1+z, l, c
+		bits := math.Float64bits(1 + z)
+		o := &t.octaves[bits>>mantissa-(1023+firstOctave)]
+		if o.slow {
+			b.slow = append(b.slow, int32(i))
+			continue
+		}
+		cells[i], local[i] = o.find(bits, z)
 	}
 }
 
@@ -235,9 +241,18 @@ func (m *Model) slowValue(q Quantity, z float64) float64 {
 // the same cells as [Model.Fill] and with the same bits.
 func (m *Model) At(q Quantity, z float64) float64 {
 	m.Prepare(q)
-	if q == ContactLost {
+	switch {
+	case !(z > m.past.lowest && z <= MaxRedshift):
+		return math.NaN()
+	case q == ContactLost:
 		return m.contactLost(z)
 	}
+	return m.value(q, z)
+}
+
+// value is At for the quantities of the base tables' cells, whose tables have
+// been built, anywhere between the cells' ends: beyond MaxRedshift too.
+func (m *Model) value(q Quantity, z float64) float64 {
 	t := &m.past
 	c, l := t.locate(z)
 	if c < 0 {
@@ -254,9 +269,6 @@ func (m *Model) At(q Quantity, z float64) float64 {
 		}
 		return s
 	case q == Slope && flat:
-		if c == 0 {
-			return math.NaN()
-		}
 		return 1
 	case q == Slope:
 		return t.slope[c].at(l)

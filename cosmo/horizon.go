@@ -2,7 +2,6 @@ package cosmo
 
 import (
 	"math"
-	"sync"
 
 	"catenrich/internal/exact"
 )
@@ -129,7 +128,7 @@ func (m *Model) slowContactLost(z float64) float64 {
 	h := m.future.grid()
 	g := m.At(DC, z)
 	if g > h.total {
-		return m.At(Age, m.invertDistance(g-h.total, z))
+		return m.At(Age, m.invertDistance(g-h.total, 0, z, 0.5*z))
 	}
 	_, time := h.solve(m, g)
 	if age := m.past.scalars().age + time; age <= math.MaxFloat64 {
@@ -138,40 +137,24 @@ func (m *Model) slowContactLost(z float64) float64 {
 	return math.NaN()
 }
 
-// invertDistance returns the z in [0, high] where D_C/D_H = d.
-func (m *Model) invertDistance(d, high float64) float64 {
-	low, z := 0.0, min(d, 0.5*high)
+// invertDistance returns the z between low and high where D_C/D_H = d, by
+// Newton's method from a guess, kept within the bracket.
+func (m *Model) invertDistance(d, low, high, z float64) float64 {
 	for range 200 {
-		miss := m.At(DC, z) - d
+		miss := m.value(DC, z) - d
 		if miss > 0 {
 			high = z
 		} else {
 			low = z
 		}
-		next := z - float64(miss*m.At(E, z))
+		next := z - float64(miss*m.value(E, z))
 		if !(low <= next && next <= high) {
 			next = 0.5 * (low + high)
 		}
-		if math.Abs(next-z) <= 2e-16*z {
-			break
+		if math.Abs(next-z) <= 2e-16*max(math.Abs(z), 0.1) {
+			return next
 		}
 		z = next
 	}
 	return z
-}
-
-// futureTable is the contact-lost ages of a Model.
-type futureTable struct {
-	grid func() *horizonGrid
-	once sync.Once
-}
-
-func (m *Model) buildFuture() {}
-
-func (m *Model) contactLost(z float64) float64 { return m.slowContactLost(z) }
-
-func (m *Model) fillContactLost(b *Base) {
-	for i, z := range b.Z {
-		b.ContactLost[i] = m.contactLost(z)
-	}
 }

@@ -33,7 +33,7 @@ func newGauss(n int) gauss {
 
 var (
 	coarse = newGauss(12)
-	short  = newGauss(5)
+	short  = newGauss(4)
 )
 
 // apply returns the integral of f from a to b by one panel of the rule.

@@ -1,0 +1,216 @@
+package selection
+
+import (
+	"math"
+
+	"catenrich/internal/exact"
+	"catenrich/internal/status"
+)
+
+// Rows are a batch of objects. Z, Apparent and Offset are required.
+type Rows struct {
+	Z        []float64 // z_cos
+	Apparent []float64 // m - A for limits on corrected magnitudes, m for observed ones
+	Offset   []float64 // mu + K + e of the row itself, D_L in Mpc, K the selection's own
+
+	ObsRatio   []float64 // (1+z_obs)/(1+z_cos); nil: 1
+	FrameRatio []float64 // (1+z_frame)/(1+z_cos); nil: 1
+	Template   []int32   // index of the row's K-correction, -1 for none; nil: the only one
+
+	Faint, Bright []float64 // limits of each row, in place of the selection's; may be nil
+}
+
+// Roots fills zmin and zmax with the redshifts between which each object would
+// have been selected: outward from its own, the first at which
+//
+//	m_lim = M + A + mu(z) + K(z) + e(z)
+//
+// cut to the selection's redshift limits. At its own z the right side is its own
+// magnitude.
+//
+// An object outside the selection gets NaN and status.Selection. Where K is not
+// known far enough to say whether there is a root, the cell is NaN with
+// status.Coverage; without a limit in that direction (bright for zmin, faint for
+// zmax) K is not asked, and the redshift limit stands. A missing limit of the
+// row is status.Input. Other NaN stay NaN without a bit: who made them has said
+// why.
+func (s *Selection) Roots(zmin, zmax []float64, r *Rows, st []int32) {
+	for i := range zmin {
+		o, ok := s.object(r, i, st)
+		if !ok {
+			zmin[i], zmax[i] = math.NaN(), math.NaN()
+			continue
+		}
+		if zmax[i] = o.outward(); zmax[i] != zmax[i] {
+			st[i] |= status.Coverage
+		}
+		if zmin[i] = o.inward(); zmin[i] != zmin[i] {
+			st[i] |= status.Coverage
+		}
+	}
+}
+
+// An object is one row with its limits turned into limits on w.
+type object struct {
+	c             *curve
+	l             *Limits
+	z, q          float64
+	bright, faint float64 // limits on w at q
+	lo, hi        float64 // where w is known
+}
+
+// object sets a row up; ok is false if it has no roots.
+func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
+	bright, faint := s.limits.Bright, s.limits.Faint
+	if r.Bright != nil {
+		bright = r.Bright[i]
+	}
+	if r.Faint != nil {
+		faint = r.Faint[i]
+	}
+	if bright != bright || faint != faint {
+		st[i] |= status.Input
+		return o, false
+	}
+	z, m, w := r.Z[i], r.Apparent[i], r.Offset[i]
+	if !(z > 0) || m != m || w != w {
+		return o, false
+	}
+	if !(z >= s.limits.Zmin && z <= s.limits.Zmax && m >= bright && m <= faint) {
+		st[i] |= status.Selection
+		return o, false
+	}
+	t := int32(0)
+	if r.Template != nil {
+		if t = r.Template[i]; t < 0 {
+			return o, false
+		}
+	}
+	c := s.curves[t]
+	o = object{c: c, l: &s.limits, z: z, q: 1, lo: c.zlo, hi: c.zhi}
+	if r.ObsRatio != nil && r.ObsRatio[i] != 1 {
+		o.q = r.ObsRatio[i]
+	}
+	// 5 log10 of the ratios is in mu for every z alike.
+	if ratio := o.q * ratioOf(r.FrameRatio, i); ratio != 1 {
+		w -= float64(5 * exact.Log10(ratio))
+	}
+	if o.q != 1 {
+		if k, same := c.k.Scale(o.q); same {
+			w -= k
+			o.q = 1
+		} else {
+			o.lo, o.hi = c.covered(&s.limits, o.q)
+		}
+	}
+	o.bright, o.faint = w+(bright-m), w+(faint-m)
+	if len(c.pieces) == 0 {
+		st[i] |= status.Coverage
+		return o, false
+	}
+	return o, true
+}
+
+func ratioOf(r []float64, i int) float64 {
+	if r == nil {
+		return 1
+	}
+	return r[i]
+}
+
+// outward finds zmax: from z up, the first place where w leaves [bright, faint].
+func (o *object) outward() float64 {
+	c, from := o.c, o.z
+	for i := c.pieceAt(o.z); i < len(c.pieces); i++ {
+		p := &c.pieces[i]
+		end := min(p.zhi, o.hi)
+		if i == len(c.pieces)-1 {
+			end = o.hi
+		}
+		if !(end >= from) {
+			break
+		}
+		if limit, ok := o.crossed(end, p.zhi, p.whi, p.whi > p.wlo); ok {
+			return max(o.root(p, limit, from, end), o.z)
+		}
+		from = end
+	}
+	if o.hi < o.l.Zmax && o.faint <= math.MaxFloat64 {
+		return math.NaN() // K ends before the sample does
+	}
+	return o.l.Zmax
+}
+
+// inward finds zmin: from z down, the first place where w leaves [bright, faint].
+func (o *object) inward() float64 {
+	c, from := o.c, o.z
+	if o.bright < -math.MaxFloat64 && len(c.pieces) == 1 && c.pieces[0].whi > c.pieces[0].wlo {
+		return o.l.Zmin // nearer is brighter, and there is no bright limit
+	}
+	for i := c.pieceAt(o.z); i >= 0; i-- {
+		p := &c.pieces[i]
+		end := max(p.zlo, o.lo)
+		if i == 0 {
+			end = o.lo
+		}
+		if !(end <= from) {
+			break
+		}
+		if limit, ok := o.crossed(end, p.zlo, p.wlo, p.whi < p.wlo); ok {
+			return min(o.root(p, limit, from, end), o.z)
+		}
+		from = end
+	}
+	if o.lo > max(o.l.Zmin, least) && o.bright >= -math.MaxFloat64 {
+		return math.NaN()
+	}
+	return o.l.Zmin
+}
+
+// crossed reports whether w leaves the limits on the way to end, a way on which
+// it grows fainter or brighter throughout, and which limit it crosses. w at
+// zknown is wknown for q = 1; for other q that decides unless it is close.
+func (o *object) crossed(end, zknown, wknown float64, fainter bool) (limit float64, ok bool) {
+	limit = o.bright
+	if fainter {
+		limit = o.faint
+	}
+	if limit-limit != 0 {
+		return limit, false
+	}
+	w := wknown
+	if o.q != 1 {
+		margin := 2*o.c.steep*math.Abs(o.q-1) + 1e-9
+		if end != zknown || math.Abs(limit-w) <= margin {
+			w = o.c.at(end, o.q)
+		}
+	}
+	if fainter {
+		return limit, w > limit
+	}
+	return limit, w < limit
+}
+
+// root finds where w is equal to limit, between from and end.
+func (o *object) root(p *piece, limit, from, end float64) float64 {
+	c := o.c
+	z, slope, ok := p.inverse.guess(limit)
+	if ok && o.q != 1 {
+		// K is read at q(1+z)-1: first order in q-1.
+		if k := c.k.Slope(z); k == k {
+			z, slope, ok = p.inverse.guess(limit - float64(k*(o.q-1)*(1+z)))
+		}
+	}
+	lo, hi := min(from, end), max(from, end)
+	for range 6 {
+		if !ok || !(z >= lo && z <= hi) {
+			break
+		}
+		d := float64((c.at(z, o.q) - limit) * slope)
+		z -= d
+		if math.Abs(d) <= 1e-7*z {
+			return min(max(z, lo), hi)
+		}
+	}
+	return bracketed(func(x float64) float64 { return c.at(x, o.q) - limit }, from, end)
+}
