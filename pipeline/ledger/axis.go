@@ -9,8 +9,9 @@ import (
 // data, so that any two histograms over it can be added. Bins have integer
 // keys, from First to End-1:
 //
-//   - Scale "linear": bin k is [k/PerUnit, (k+1)/PerUnit). The key of v is
-//     floor(v PerUnit), the product rounded to a float64.
+//   - Scale "linear": bin k is [k/PerUnit, (k+1)/PerUnit), each edge rounded to
+//     the nearest float64, so that a number written in decimal as an edge
+//     starts its bin.
 //   - Scale "binary", for positive numbers over many orders of magnitude: with
 //     x = v + Plus rounded to a float64, x = 2^e (1+f) and 0 <= f < 1, the key
 //     is e 2^Bits + floor(f 2^Bits). It is x's exponent and leading mantissa
@@ -56,7 +57,7 @@ func CoarseRedshiftAxis() Axis { return Binary("1+z", 1, 3, -7, 14) }
 func CoarseMagnitudeAxis(name string) Axis { return Linear(name, 2, -60, 60) }
 
 // maxBins bounds what a histogram read from a file may allocate.
-const maxBins = 1 << 20
+const maxBins = 1 << 18
 
 // bins is the number of bins, without the two for what lies outside.
 func (a *Axis) bins() int64 { return a.End - a.First }
@@ -95,31 +96,45 @@ func (a *Axis) edgeOfX(key int64) float64 {
 	return math.Ldexp(1+part, int(octave))
 }
 
+// edges lists the edges of a linear axis, the upper one of the last bin too.
+func (a *Axis) edges() []float64 {
+	if a.Scale != "linear" {
+		return nil
+	}
+	edges := make([]float64, a.bins()+1)
+	for i := range edges {
+		edges[i] = a.Edge(a.First + int64(i))
+	}
+	return edges
+}
+
 // places writes where each number of v is counted: 0 is below, bins()+1 above,
-// -1 nowhere because it is NaN.
-func (a *Axis) places(v []float64, at []int32) {
+// -1 nowhere because it is NaN. edges is what the method of that name returned.
+func (a *Axis) places(v, edges []float64, at []int32) {
 	if a.Scale == "linear" {
-		a.placesLinear(v, at)
+		a.placesLinear(v, edges, at)
 	} else {
 		a.placesBinary(v, at)
 	}
 }
 
-func (a *Axis) placesLinear(v []float64, at []int32) {
+func (a *Axis) placesLinear(v, edges []float64, at []int32) {
 	at = at[:len(v)]
-	perUnit, first, end := float64(a.PerUnit), float64(a.First), float64(a.End)
-	offset := 1 - a.First
+	perUnit, first, end := float64(a.PerUnit), edges[0], edges[len(edges)-1]
 	for i, x := range v {
-		t := x * perUnit
-		if t >= first && t < end {
-			k := int64(t)
-			if float64(k) > t {
-				k-- // the conversion rounds toward zero
-			}
-			at[i] = int32(k + offset)
+		if !(x >= first && x < end) {
+			at[i] = a.outside(x, first, end)
 			continue
 		}
-		at[i] = a.outside(t, first, end)
+		// The product may round across an edge, and the conversion rounds
+		// toward zero: together they miss by one at most.
+		k := max(int64(x*perUnit)-a.First, 0)
+		if x < edges[k] {
+			k--
+		} else if x >= edges[k+1] {
+			k++
+		}
+		at[i] = int32(k) + 1
 	}
 }
 

@@ -15,6 +15,7 @@ import (
 type Histogram struct {
 	axes   []Axis
 	counts []int64 // the last axis runs fastest; each has a place below and one above
+	edges  [2][]float64
 	at     [2][]int32
 }
 
@@ -41,9 +42,10 @@ func newHistogram(axes []Axis) (*Histogram, error) {
 		if err := axes[i].validate(); err != nil {
 			return nil, err
 		}
-		if size *= axes[i].bins() + 2; size > 4*maxBins {
-			return nil, fmt.Errorf("a histogram of more than %d cells", 4*maxBins)
+		if size *= axes[i].bins() + 2; size > maxBins {
+			return nil, fmt.Errorf("a histogram of more than %d cells", maxBins)
 		}
+		h.edges[i] = axes[i].edges()
 		h.at[i] = make([]int32, histogramBatch)
 	}
 	h.counts = make([]int64, size)
@@ -61,7 +63,7 @@ func (h *Histogram) Add(v []float64) {
 	for len(v) > 0 {
 		n := min(len(v), histogramBatch)
 		at := h.at[0][:n]
-		h.axes[0].places(v[:n], at)
+		h.axes[0].places(v[:n], h.edges[0], at)
 		for _, k := range at {
 			if k >= 0 {
 				h.counts[k]++
@@ -80,8 +82,8 @@ func (h *Histogram) AddPairs(x, y []float64) {
 	for len(x) > 0 {
 		n := min(len(x), histogramBatch)
 		a, b := h.at[0][:n], h.at[1][:n]
-		h.axes[0].places(x[:n], a)
-		h.axes[1].places(y[:n], b)
+		h.axes[0].places(x[:n], h.edges[0], a)
+		h.axes[1].places(y[:n], h.edges[1], b)
 		for i := range a {
 			if a[i] >= 0 && b[i] >= 0 {
 				h.counts[a[i]*stride+b[i]]++
