@@ -39,6 +39,12 @@ func (e *Encoder) Struct(id int16) {
 	e.Element()
 }
 
+// Encoded appends a field that is a struct, encoded elsewhere.
+func (e *Encoder) Encoded(id int16, v []byte) {
+	e.field(id, typeStruct)
+	e.B = append(e.B, v...)
+}
+
 // Element opens a struct that is an element of a list; End closes it.
 func (e *Encoder) Element() {
 	e.outer = append(e.outer, e.last)
