@@ -133,10 +133,8 @@ func parse(text []byte) (*Manifest, error) {
 	if err := json.Unmarshal(line, m); err != nil {
 		return nil, err
 	}
-	for _, c := range m.Tally.Columns {
-		if c == nil {
-			return nil, fmt.Errorf("a column that is null")
-		}
+	if err := m.Tally.complete(); err != nil {
+		return nil, err
 	}
 	if got := publish.Digest(sha256.Sum256(m.Settings)); got != m.ConfigHash {
 		return nil, fmt.Errorf("the settings have the hash %v, not %v as it says", got, m.ConfigHash)

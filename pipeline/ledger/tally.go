@@ -1,6 +1,7 @@
 package ledger
 
 import (
+	"errors"
 	"fmt"
 
 	"catenrich/internal/fault"
@@ -133,13 +134,36 @@ func (c *Column) Add(cells *table.Column, status []int32) {
 	c.Values += int64(rows) - nulls
 }
 
+// complete refuses a tally, read from a file, in which something named is null.
+func (t *Tally) complete() error {
+	for _, c := range t.Columns {
+		if c == nil {
+			return errors.New("a column that is null")
+		}
+	}
+	for name, e := range t.Extents {
+		if e == nil {
+			return fmt.Errorf("the extent %q is null", name)
+		}
+	}
+	for name, s := range t.Sums {
+		if s == nil {
+			return fmt.Errorf("the sum %q is null", name)
+		}
+	}
+	for name, h := range t.Histograms {
+		if h == nil {
+			return fmt.Errorf("the histogram %q is null", name)
+		}
+	}
+	return nil
+}
+
 // Merge adds what o counted. Both must count the same columns; a statistic
 // that only one has is kept.
 func (t *Tally) Merge(o *Tally) error {
 	if len(t.Columns) == 0 && t.Rows == 0 {
-		for _, c := range o.Empty().Columns {
-			t.Columns = append(t.Columns, c)
-		}
+		t.Columns = o.Empty().Columns
 	}
 	if len(t.Columns) != len(o.Columns) {
 		return fault.Data.Errorf("counts of %d and of %d columns cannot be added", len(t.Columns), len(o.Columns))
