@@ -9,6 +9,7 @@ import (
 	"sort"
 
 	"catenrich/cosmo"
+	"catenrich/cosmo/frame"
 	"catenrich/internal/fault"
 	"catenrich/internal/table"
 )
@@ -17,6 +18,9 @@ import (
 type Job struct {
 	Settings Settings
 	Models   []*cosmo.Model // one for each of Settings.Cosmologies
+
+	Bands      []BandPlan      // one for each of Settings.Bands
+	Selections []SelectionPlan // one for each of Settings.Selections
 
 	Title      string
 	Patterns   []string // of input files, relative to Base
@@ -27,6 +31,16 @@ type Job struct {
 
 	// Place names a setting as the user wrote it, for messages of later steps.
 	Place func(path string) string
+
+	paths map[Role]string
+}
+
+// RolePath is the key path of the setting that names the column of a role.
+func (j *Job) RolePath(role Role) string {
+	if path, ok := j.paths[role]; ok {
+		return path
+	}
+	return "columns." + string(role)
 }
 
 // A Catalog knows the columns that can be added. Expand turns the names and
@@ -43,7 +57,7 @@ func (f *File) Resolve(c Catalog) (*Job, error) {
 	r := &resolver{file: f}
 	r.job = &Job{
 		Title: f.Title, Patterns: f.Input.Files, Base: filepath.Dir(f.Name), Directory: f.Output.Directory, File: f.Output.File,
-		MaxRejects: f.Limits.MaxRejects, Place: f.Place,
+		MaxRejects: f.Limits.MaxRejects, Place: f.Place, paths: make(map[Role]string),
 	}
 	s := &r.job.Settings
 	s.OutputVersion = OutputVersion
@@ -57,6 +71,9 @@ func (f *File) Resolve(c Catalog) (*Job, error) {
 	r.columns(s)
 	r.redshift(&s.Redshift)
 	r.cosmologies(s)
+	r.bands(s)
+	r.others(s)
+	r.selections(s)
 	r.added(s, c)
 	if len(r.wrong) == 0 {
 		return r.job, nil
@@ -273,8 +290,32 @@ func (r *resolver) redshift(s *RedshiftSettings) {
 	case c.Quality != "" && len(s.QualityGood) == 0:
 		r.fail("columns.quality", "is set, but redshift.quality_good does not say which marks are good")
 	}
+	r.frames(s)
 	if s.PeculiarVelocitySigma = r.finite("redshift.peculiar_velocity_sigma", z.PeculiarVelocitySigma); s.PeculiarVelocitySigma < 0 {
 		r.fail("redshift.peculiar_velocity_sigma", "is %v, want 0 or more, in km/s", s.PeculiarVelocitySigma)
+	}
+}
+
+// frames checks that the route from the catalogue's frame to that of the
+// distances can be taken.
+func (r *resolver) frames(s *RedshiftSettings) {
+	c := &r.file.Columns
+	if (c.RightAscension == "") != (c.Declination == "") {
+		r.fail("columns.right_ascension", "and columns.declination go together")
+	}
+	from, _ := frame.ParseFrame(s.Frame)
+	to, _ := frame.ParseFrame(s.DistancesIn)
+	if _, err := frame.NewRoute(from, to, c.RightAscension != ""); err != nil {
+		r.fail("redshift.distances_in", "cannot be had: %v", err)
+	}
+	if c.RedshiftHeliocentric != "" && s.Frame == "heliocentric" {
+		r.fail("columns.redshift_heliocentric", "is set, but redshift.frame says that the redshift is heliocentric already")
+	}
+	if (c.RedshiftLower == "") != (c.RedshiftUpper == "") {
+		r.fail("columns.redshift_lower", "and columns.redshift_upper go together")
+	}
+	if c.RedshiftError != "" && c.Velocity != "" || c.VelocityError != "" && c.Redshift != "" {
+		r.fail("columns.redshift_error", "goes with a redshift, columns.velocity_error with a velocity")
 	}
 }
 

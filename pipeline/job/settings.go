@@ -19,16 +19,22 @@ const OutputVersion = 1
 // Titles, paths, workers and memory are not in it. Its canonical JSON is
 // recorded in every manifest, and its SHA-256 is the config hash.
 type Settings struct {
-	OutputVersion int              `json:"outputVersion"`
-	Input         InputSettings    `json:"input"`
-	Output        OutputSettings   `json:"output"`
-	Catalogue     map[Role]string  `json:"catalogue"` // role → column of the catalogue
-	Missing       map[Role]Numbers `json:"missing"`   // sentinels by role, sorted
-	Redshift      RedshiftSettings `json:"redshift"`
-	Cosmologies   []ModelSettings  `json:"cosmologies"`
-	Added         []string         `json:"added"` // without prefix and suffixes, in table order
-	LengthUnit    string           `json:"lengthUnit"`
-	Prefix        string           `json:"prefix"`
+	OutputVersion int                 `json:"outputVersion"`
+	Input         InputSettings       `json:"input"`
+	Output        OutputSettings      `json:"output"`
+	Catalogue     map[Role]string     `json:"catalogue"` // role → column of the catalogue
+	Missing       map[Role]Numbers    `json:"missing"`   // sentinels by role, sorted
+	Redshift      RedshiftSettings    `json:"redshift"`
+	Cosmologies   []ModelSettings     `json:"cosmologies"`
+	Bands         []BandSettings      `json:"bands"` // by name, as all that follow
+	Lines         []LineSettings      `json:"lines"`
+	Radios        []RadioSettings     `json:"radios"`
+	Sizes         []SizeSettings      `json:"sizes"`
+	Selections    []SelectionSettings `json:"selections"`
+	Cuts          []CutSettings       `json:"cuts"`
+	Added         []string            `json:"added"` // without prefix and suffixes, in table order
+	LengthUnit    string              `json:"lengthUnit"`
+	Prefix        string              `json:"prefix"`
 }
 
 // A Role is what a column of the catalogue is to the job, named by its key in
