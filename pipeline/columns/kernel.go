@@ -29,7 +29,8 @@ type Base struct {
 type Rows struct {
 	ZCos   []float64 // cosmological redshift
 	ZModel []float64 // the same, NaN where columns of the model are null
-	XObs   []float64 // 1+z as observed at the Sun
+	ZObs   []float64 // redshift as observed at the Sun
+	XObs   []float64 // 1+ZObs
 	Status []int32   // bits of the row so far
 
 	// ToAngular is (1+z_frame)/[(1+z_cos)(1+z_obs)], which turns the transverse
@@ -159,7 +160,8 @@ type Scratch struct {
 // NewScratch returns the working memory for one worker.
 func NewScratch() *Scratch {
 	s := new(Scratch)
-	s.rows.ZCos, s.rows.ZModel, s.rows.XObs = make([]float64, span), make([]float64, span), make([]float64, span)
+	s.rows.ZCos, s.rows.ZModel = make([]float64, span), make([]float64, span)
+	s.rows.ZObs, s.rows.XObs = make([]float64, span), make([]float64, span)
 	s.base.angularBuf, s.base.luminosityBuf = make([]float64, span), make([]float64, span)
 	s.base.Rows = &s.rows
 	return s

@@ -37,13 +37,15 @@ func newRedshifter(s *job.Settings, where map[job.Role]int) redshifter {
 
 // resize gives the span n rows.
 func (r *Rows) resize(n int) {
-	r.ZCos, r.ZModel, r.XObs = r.ZCos[:n], r.ZModel[:n], r.XObs[:n]
+	r.ZCos, r.ZModel = r.ZCos[:n], r.ZModel[:n]
+	r.ZObs, r.XObs = r.ZObs[:n], r.XObs[:n]
 }
 
 // drop takes every redshift from row i, for the reason bit.
 func (r *Rows) drop(i int, bit int32) {
 	r.Status[i] |= bit
-	r.ZCos[i], r.ZModel[i], r.XObs[i] = math.NaN(), math.NaN(), math.NaN()
+	r.ZCos[i], r.ZModel[i] = math.NaN(), math.NaN()
+	r.ZObs[i], r.XObs[i] = math.NaN(), math.NaN()
 }
 
 // fill computes the redshifts of the rows of the span that starts at lo.
@@ -76,7 +78,8 @@ func (z *redshifter) set(r *Rows, i int, v float64) {
 		r.drop(i, status.Range)
 		return
 	}
-	r.ZCos[i], r.ZModel[i], r.XObs[i] = v, v, 1+v
+	r.ZCos[i], r.ZModel[i] = v, v
+	r.ZObs[i], r.XObs[i] = v, 1+v
 	if v <= 0 {
 		r.Status[i] |= status.NotPositive
 		if v < 0 && !z.signed {

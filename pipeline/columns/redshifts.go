@@ -1,6 +1,10 @@
 package columns
 
-import "catenrich/internal/exact"
+import (
+	"math"
+
+	"catenrich/internal/exact"
+)
 
 // redshifts are the columns about the redshift itself. They come after the
 // others: a reader of the output looks for distances first.
@@ -10,8 +14,8 @@ var redshifts = []Entry{
 		Doc:  "cosmological dimming of surface brightness, 10 log10(1+z)",
 		From: "Tolman 1930; Hogg 1999, section 7",
 		Eval: func(b *Base, out []float64) {
-			for i, x := range b.Rows.XObs {
-				out[i] = 10 * exact.Log10(x)
+			for i, z := range b.Rows.ZObs { // 1+z would lose the digits of a small z
+				out[i] = 10 / math.Ln10 * exact.Log1p(z)
 			}
 		},
 	},
