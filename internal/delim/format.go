@@ -124,22 +124,28 @@ func significant(text []byte) (n int) {
 // The digits are brought to 17 by zeros at the end and made into bytes eight
 // at a time, so that where they end, and where the point falls, are shifts.
 func appendDecimal(dst []byte, digits uint64, exponent int) []byte {
-	for digits < 1e16 {
+	if digits < 1e9 { // of a float32, or next to zero
+		digits *= 1e8
+		exponent -= 8
+	}
+	for digits < 1e15 {
 		digits *= 10
 		exponent--
 	}
-	exponent += 16 // of scientific notation
+	short := bit(digits < 1e16) // as often as not, so without a branch
+	digits *= 1 + 9*short
+	exponent += 16 - int(short) // of scientific notation
 	head := digits / 1e9
 	tail := digits - head*1e9
 	last := tail % 10
 	a, b := eightDigits(head), eightDigits(tail/10)
 
-	count := 17
-	if last == 0 {
-		count = 16 - bits.LeadingZeros64(b)/8
-		if b == 0 {
-			count = 8 - bits.LeadingZeros64(a)/8
-		}
+	count := 16 - bits.LeadingZeros64(b)/8
+	if b == 0 {
+		count = 8 - bits.LeadingZeros64(a)/8
+	}
+	if last != 0 {
+		count = 17
 	}
 	const zeros = 0x3030303030303030
 	a |= zeros

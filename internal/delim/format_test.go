@@ -10,7 +10,7 @@ import (
 	"testing"
 )
 
-var many = flag.Int("many", 200_000, "random numbers of each distribution to format")
+var many = flag.Int("many", 50_000, "random numbers of each distribution to format")
 
 // wantForm lays out what strconv finds the shortest digits to be, the plain
 // way: the judge of AppendFloat.

@@ -36,34 +36,40 @@ func shortest(floatBits uint64, mantissaBits, bias int) (digits uint64, exponent
 	g := &powers[-k-minPower]
 	h := uint(q + floorLog2Pow10(-k) + 1)
 	mid, low, high = g.scale(mid<<h), g.scale(low<<h), g.scale(high<<h)
-	if c&1 == 1 { // the ends round to the neighbours
-		low++
-		high--
-	}
+	odd := c & 1 // then the ends round to the neighbours
+	low += odd
+	high -= odd
 
+	// Without branches, since which case it is is as good as random. First, s or
+	// s+1: the only one that reads back, or the nearer one, ties to even.
 	s := mid / 4
+	below, above := bit(low <= 4*s), bit(4*s+4 <= high)
+	half := 4*s + 2
+	nearer := bit(mid > half) | bit(mid == half)&s
+	up := above
+	if below == above {
+		up = nearer & 1
+	}
+	digits = s + up
+
+	// One digit less, if exactly one of the two around reads back.
 	if s >= 10 {
-		// One digit less, if exactly one of the two around fits.
 		t := s / 10 * 10
-		below, above := low <= 4*t, 4*t+40 <= high
+		below, above = bit(low <= 4*t), bit(4*t+40 <= high)
+		t += 10 * above
 		if below != above {
-			if above {
-				t += 10
-			}
-			return t, k
+			digits = t
 		}
 	}
-	below, above := low <= 4*s, 4*s+4 <= high
-	if below != above {
-		if above {
-			s++
-		}
-		return s, k
+	return digits, k
+}
+
+// bit is 1 for true.
+func bit(b bool) (n uint64) {
+	if b {
+		n = 1
 	}
-	if half := 4*s + 2; mid > half || mid == half && s&1 == 1 {
-		s++
-	}
-	return s, k
+	return n
 }
 
 // Integer forms of the logarithms that choose a power, right for every
