@@ -40,6 +40,7 @@ type Parquet struct {
 	leaf   []int // of each field of the schema; -1 for a group
 
 	wants  []table.Want
+	added  []table.Field
 	leaves []int // the leaves that are wanted, in rising order, each once
 
 	group  int // of the next chunk
@@ -122,7 +123,7 @@ func (p *Parquet) File() (*os.File, int64) { return p.file, p.opened.size }
 // Select implements [table.Source]. A column that cannot be had in the wanted
 // way is a fault.Data.
 func (p *Parquet) Select(wants []table.Want, added []table.Field) error {
-	p.wants, p.leaves = wants, nil
+	p.wants, p.added, p.leaves = wants, added, nil
 	for _, w := range wants {
 		if w.Field < 0 || w.Field >= len(p.schema.Fields) {
 			return fault.Internal.Errorf("readers: column %d of %s was asked for, and it has %d", w.Field, p.path, len(p.schema.Fields))
@@ -191,7 +192,7 @@ func sliceChunk(cursor *parquetCursor, first, rows int64, index int, seq int64) 
 // fault.Data that names row group and column.
 func (p *Parquet) Decode(c *table.Chunk, b *table.Batch) error {
 	s := c.Cols.(parquetSlice)
-	b.Rows = c.Rows
+	b.Reset(c.Rows, p.wants, p.added)
 	return s.cursor.take(s.index, b)
 }
 

@@ -48,6 +48,10 @@ func newParquetCursor(p *Parquet, group int, rows int64) *parquetCursor {
 func (c *parquetCursor) take(index int, b *table.Batch) error {
 	c.mu.Lock()
 	defer c.mu.Unlock()
+	if c.skipping && c.next > index {
+		c.close()
+		c.columns, c.next = nil, 0 // from the start again
+	}
 	for c.err == nil && c.next < index {
 		s := c.parking()
 		c.err = c.decode(s.in, &s.cells)
@@ -59,8 +63,7 @@ func (c *parquetCursor) take(index int, b *table.Batch) error {
 	}
 	if s := c.parked[index]; s != nil && c.err == nil {
 		delete(c.parked, index)
-		copyColumns := b.In
-		b.In, s.in = s.in, copyColumns
+		b.In, s.in = s.in, b.In
 		b.Cells = append(b.Cells, s.cells...)
 		c.spare = append(c.spare, s)
 		return nil
