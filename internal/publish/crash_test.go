@@ -27,7 +27,10 @@ func (v version) publish(m *model, src *os.File) (err error) {
 	if err != nil {
 		return err
 	}
-	defer func() { err = errors.Join(err, r.Abort()) }()
+	defer func() {
+		m.aborting = m.count
+		err = errors.Join(err, r.Abort())
+	}()
 	for _, suffix := range slices.Sorted(maps.Keys(v)) {
 		o, err := r.Create(suffix)
 		if err != nil {
@@ -64,18 +67,54 @@ type passage struct {
 }
 
 // state names the state that a passage is in, or says why it is in none that
-// may be.
+// may be. An old output keeps its sidecars, though a new one may have taken a
+// sidecar's place already; a new output never comes before its sidecars.
 func (p *passage) state(m *model) (string, error) {
 	output, manifest, pending := m.read(out), m.read(ManifestPath(out)), m.read(PendingPath(out))
-	switch {
-	case output == p.oldText() && manifest == p.oldManifest && output != p.new[""]:
+	files := fmt.Errorf("output %.20q, manifest %.200q, pending %.200q", output, manifest, pending)
+	if output == p.oldText() && manifest == p.oldManifest && output != p.new[""] {
+		for suffix, text := range p.old {
+			if got := m.read(out + suffix); got != text && got != p.new[suffix] {
+				return "", fmt.Errorf("the old %s holds %q, want %q: %w", suffix, got, text, files)
+			}
+		}
 		return "old", nil
-	case output == p.new[""] && pending == p.newManifest:
+	}
+	for suffix, text := range p.new {
+		if got := m.read(out + suffix); got != text {
+			return "", fmt.Errorf("the new %s holds %q, want %q: %w", suffix, got, text, files)
+		}
+	}
+	switch {
+	case pending == p.newManifest:
 		return "new, pending", nil
-	case output == p.new[""] && manifest == p.newManifest:
+	case manifest == p.newManifest:
 		return "new", nil
 	}
-	return "", fmt.Errorf("output %.20q, manifest %.200q, pending %.200q", output, manifest, pending)
+	return "", files
+}
+
+// wantOld checks that exactly the old files stand.
+func (p *passage) wantOld(m *model) error {
+	want := map[string]string{}
+	if p.old != nil {
+		want[ManifestPath(out)] = p.oldManifest
+	}
+	for suffix, text := range p.old {
+		want[out+suffix] = text
+	}
+	for name := range m.names {
+		if _, ok := want[name]; !ok {
+			return fmt.Errorf("%s is left", name)
+		}
+	}
+	for name, text := range want {
+		// The new sidecar of a listed name may have come first.
+		if got := m.read(name); got != text && got != p.new[strings.TrimPrefix(name, out)] {
+			return fmt.Errorf("%s holds %q, want %q", name, got, text)
+		}
+	}
+	return nil
 }
 
 func (p *passage) oldText() string {
@@ -182,6 +221,11 @@ func TestEveryFault(t *testing.T) {
 				if err == nil && state != "new" {
 					t.Fatalf("%s: success in state %q", where, state)
 				}
+				if how != late && state == "old" && n <= m.aborting {
+					if err := p.wantOld(m); err != nil { // nothing went wrong in cleaning up
+						t.Fatalf("%s: %v", where, err)
+					}
+				}
 				m.how = none
 				if err := p.new.publish(m, src); err != nil {
 					t.Fatalf("%s: the next run: %v", where, err)
@@ -202,12 +246,18 @@ func TestEveryCrash(t *testing.T) {
 	all, src := passages(t)
 	tried, states := 0, map[string]int{}
 	for i, p := range all {
-		seen := map[[32]byte]bool{} // recovering from the same disk is the same again
+		seen, killed := map[[32]byte]bool{}, map[[32]byte]bool{} // the same disk again tells nothing new
 		for n, done := 1, false; !done; n++ {
 			m := p.before(t, src)
 			m.at, m.how = n, crash
 			if err := p.new.publish(m, src); err == nil {
 				done = true // and the power is cut after the last one
+			}
+			// The process may die without the machine: then what it saw stays,
+			// and the cut comes later.
+			if key := m.disk(); m.read(PendingPath(out)) != "-" && !killed[key] {
+				killed[key] = true
+				tried += p.crashInRecovery(t, fmt.Sprintf("passage %d, killed at operation %d", i, n), m)
 			}
 			m.cuts(func(what string, after *model) {
 				tried++
@@ -245,7 +295,7 @@ func TestEveryCrash(t *testing.T) {
 func (p *passage) crashInRecovery(t *testing.T, where string, first *model) (tried int) {
 	seen := map[[32]byte]bool{}
 	for n, done := 1, false; !done; n++ {
-		m := first.afterCut(0, kept)
+		m := first.clone()
 		m.at, m.how = n, crash
 		if _, err := Recover(m, out); err == nil {
 			done = true

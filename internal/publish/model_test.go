@@ -1,6 +1,7 @@
 package publish
 
 import (
+	"bytes"
 	"crypto/sha256"
 	"errors"
 	"fmt"
@@ -29,6 +30,8 @@ type model struct {
 	at     int // the operation that goes wrong, from 1
 	how    mishap
 	halted bool // after a crash nothing happens any more
+
+	aborting int // count when the publication began to clean up
 }
 
 type inode struct{ seen, synced []byte }
@@ -100,6 +103,28 @@ func (c change) apply(disk map[string]*inode) {
 	}
 }
 
+// clone returns a copy, switched on again, that shares nothing with m.
+func (m *model) clone() *model {
+	copies := map[*inode]*inode{nil: nil}
+	copyOf := func(n *inode) *inode {
+		if _, ok := copies[n]; !ok {
+			copies[n] = &inode{bytes.Clone(n.seen), bytes.Clone(n.synced)}
+		}
+		return copies[n]
+	}
+	c := newModel()
+	for name, n := range m.names {
+		c.names[name] = copyOf(n)
+	}
+	for name, n := range m.durable {
+		c.durable[name] = copyOf(n)
+	}
+	for _, x := range m.changes {
+		c.changes = append(c.changes, change{x.from, x.to, copyOf(x.node)})
+	}
+	return c
+}
+
 // A remnant says what a power cut leaves of a file's bytes that were not
 // synced.
 type remnant int
@@ -112,7 +137,7 @@ const (
 
 // afterCut returns the filesystem after a power cut: of the directory's changes
 // since its last sync, those whose bit is set in kept arrived.
-func (m *model) afterCut(arrived uint, bytes remnant) *model {
+func (m *model) afterCut(arrived uint, left remnant) *model {
 	disk := maps.Clone(m.durable)
 	for i, c := range m.changes {
 		if arrived>>i&1 == 1 {
@@ -123,9 +148,9 @@ func (m *model) afterCut(arrived uint, bytes remnant) *model {
 	for name, n := range disk {
 		data := n.synced
 		switch {
-		case bytes == kept:
+		case left == kept:
 			data = n.seen
-		case bytes == zeroed && string(n.seen) != string(n.synced):
+		case left == zeroed && string(n.seen) != string(n.synced):
 			data = make([]byte, len(n.seen))
 		}
 		copied := &inode{append([]byte{}, data...), append([]byte{}, data...)}
@@ -137,7 +162,7 @@ func (m *model) afterCut(arrived uint, bytes remnant) *model {
 // cuts calls f for the ways in which a power cut could leave m: every subset of
 // the unsynced changes, or 200 of them if there are more than 256.
 func (m *model) cuts(f func(what string, after *model)) {
-	for bytes := lost; bytes <= kept; bytes++ {
+	for left := lost; left <= kept; left++ {
 		total := uint(1) << len(m.changes)
 		random := rand.New(rand.NewPCG(1, uint64(m.count)))
 		for i := range min(total, 256) {
@@ -147,7 +172,7 @@ func (m *model) cuts(f func(what string, after *model)) {
 			} else if total > 256 && i == 1 {
 				arrived = total - 1
 			}
-			f(fmt.Sprintf("changes %b of %d, bytes %d", arrived, len(m.changes), bytes), m.afterCut(arrived, bytes))
+			f(fmt.Sprintf("changes %b of %d, bytes %d", arrived, len(m.changes), left), m.afterCut(arrived, left))
 		}
 	}
 }

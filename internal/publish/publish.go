@@ -66,7 +66,7 @@ type Release struct {
 	temps   map[string]bool    // temporaries that exist
 	ended   bool
 	started bool // a pending manifest was put in place
-	moved   bool // the output was renamed, or may have been
+	moved   bool // the output was renamed: the rest is for Recover
 }
 
 // Begin prepares to publish target. It makes the directory if there is none,
@@ -314,13 +314,12 @@ func (r *Release) stepOutputs(record Record) error {
 func (r *Release) renameOutput() error {
 	temp := r.outputs[""].temp
 	if _, err := r.fsys.Lstat(r.target); errors.Is(err, fs.ErrNotExist) {
-		r.moved = true
 		err := r.fsys.RenameNew(temp, r.target)
 		if err == nil {
 			delete(r.temps, temp)
+			r.moved = true
 			return nil
 		}
-		r.moved = false
 		if !errors.Is(err, fs.ErrExist) {
 			return err
 		}
@@ -332,8 +331,9 @@ func (r *Release) renameOutput() error {
 	if err := r.refuse(state); err != nil {
 		return err
 	}
-	r.moved = true
-	return r.rename(temp, r.target)
+	err = r.rename(temp, r.target)
+	r.moved = err == nil
+	return err
 }
 
 // stepManifest is step 4. Where there are no locks, another run of the same job
@@ -399,7 +399,7 @@ func (r *Release) Abort() error {
 			errs = append(errs, fmt.Errorf("removing %s: %w", temp, plain(err)))
 		}
 	}
-	if r.started && !r.moved {
+	if r.started && !r.moved { // an error may hide a rename that happened: Recover looks
 		if _, err := Recover(r.fsys, r.target); err != nil {
 			errs = append(errs, err)
 		}
