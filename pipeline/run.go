@@ -108,7 +108,7 @@ func newRunner(p *Plan, o Options, watch Observer) *runner {
 		o.FS = publish.OS
 	}
 	r := &runner{plan: p, options: o, watch: watch}
-	r.scratch.New = func() any { return columns.NewScratch() }
+	r.scratch.New = func() any { return new(columns.Scratch) }
 	r.batches.New = func() any { return new(table.Batch) }
 	room := (o.Memory - fixedMemory) / r.chunkMemory()
 	r.depth = int(max(min(room, int64(2*o.Workers)), 1))

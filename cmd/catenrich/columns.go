@@ -65,7 +65,7 @@ func columnRows(like string) []columnRow {
 	var rows []columnRow
 	like = strings.ToLower(like)
 	for _, e := range append(columns.All(), columns.Status()) {
-		row := columnRow{e.Name, e.Group, e.Unit.VOUnit("Mpc"), e.UCD, e.Doc, e.From}
+		row := columnRow{e.Pattern(), e.Group, e.Unit.VOUnit("Mpc"), e.UCD, e.Doc, e.From}
 		if strings.Contains(strings.ToLower(row.Name+" "+row.Group+" "+row.Description), like) {
 			rows = append(rows, row)
 		}

@@ -1,9 +1,6 @@
 package columns
 
-import (
-	"catenrich/cosmo"
-	"catenrich/internal/exact"
-)
+import "catenrich/cosmo"
 
 var distances = []Entry{
 	{
@@ -40,21 +37,14 @@ var distances = []Entry{
 		Name: "distance_modulus", Group: "distances", Scope: PerModel, Unit: Magnitude, UCD: "phot.mag.distMod",
 		Doc:  "distance modulus, 5 log10 of the luminosity distance over 10 pc",
 		From: "Hogg 1999, eq. 25", Uses: cosmo.DM,
-		Eval: modulus,
+		Eval: func(b *Base, out []float64) { copy(out, b.modulus()) },
 	},
 	{
 		Name: "angular_scale", Group: "distances", Scope: PerModel, Unit: Scale, UCD: "pos.distance;phys.cosmology",
 		Doc:  "proper transverse length seen under one arcsecond",
 		From: "Hogg 1999, section 6", Uses: cosmo.DM,
-		Eval: func(b *Base, out []float64) { scale(out, b.angular(), b.Scales.PerArcs) },
+		Eval: func(b *Base, out []float64) { b.kpcPerArcsec(out) },
 	},
-}
-
-// modulus is NaN where the luminosity distance is zero or negative.
-func modulus(b *Base, out []float64) {
-	for i, d := range b.luminosity() {
-		out[i] = b.Scales.Modulus + float64(5*exact.Log10(d))
-	}
 }
 
 // scale sets out = v * by.

@@ -13,138 +13,133 @@ import (
 // rows stays in the second-level cache while every column reads it.
 const span = 2048
 
-// A Base is what the columns of a span of rows share under one model: the
-// model's dimensionless quantities (those that some column Uses), and the rows.
-type Base struct {
-	cosmo.Base
-	Rows   *Rows
-	Scales *Scales
-
-	angularBuf, luminosityBuf   []float64
-	angularDone, luminosityDone bool
-}
-
-// Rows are the redshifts of a span of rows, whatever the model. A row that
-// cannot have one holds NaN.
-type Rows struct {
-	ZCos   []float64 // cosmological redshift
-	ZModel []float64 // the same, NaN where columns of the model are null
-	ZObs   []float64 // redshift as observed at the Sun
-	XObs   []float64 // 1+ZObs
-	Status []int32   // bits of the row so far
-
-	// ToAngular is (1+z_frame)/[(1+z_cos)(1+z_obs)], which turns the transverse
-	// comoving distance into the angular diameter distance; nil where all
-	// redshifts are the same and it is 1/(1+z).
-	ToAngular []float64
-}
-
-// angular returns the angular diameter distance in Hubble distances:
-// D_M(z_cos) (1+z_frame)/[(1+z_cos)(1+z_obs)] (Davis et al. 2011).
-func (b *Base) angular() []float64 {
-	if !b.angularDone {
-		b.angularDone = true
-		b.angularBuf = b.angularBuf[:len(b.Rows.ZModel)]
-		dm := b.DM[:len(b.angularBuf)]
-		if factor := b.Rows.ToAngular; factor != nil {
-			for i := range b.angularBuf {
-				b.angularBuf[i] = dm[i] * factor[i]
-			}
-		} else {
-			divide(b.angularBuf, dm, b.X, 1)
-		}
-	}
-	return b.angularBuf
-}
-
-// luminosity returns the luminosity distance in Hubble distances,
-// (1+z_obs)^2 D_A, which is (1+z) D_M where all redshifts are the same.
-func (b *Base) luminosity() []float64 {
-	if !b.luminosityDone {
-		b.luminosityDone = true
-		b.luminosityBuf = b.luminosityBuf[:len(b.Rows.ZModel)]
-		if b.Rows.ToAngular != nil {
-			da, x := b.angular(), b.Rows.XObs[:len(b.luminosityBuf)]
-			for i := range b.luminosityBuf {
-				b.luminosityBuf[i] = x[i] * x[i] * da[i]
-			}
-		} else {
-			dm, x := b.DM[:len(b.luminosityBuf)], b.X[:len(b.luminosityBuf)]
-			for i := range b.luminosityBuf {
-				b.luminosityBuf[i] = x[i] * dm[i]
-			}
-		}
-	}
-	return b.luminosityBuf
-}
-
 // A Kernel computes the columns of one job. It is immutable, and any number
 // of goroutines may use it at once.
 type Kernel struct {
-	settings *job.Settings
-	models   []model
-	once     []output // columns that do not depend on the model
-	added    []table.Field
-	needs    []Need
-	place    func(string) string
+	job    *job.Job
+	models []model
+	once   []output // columns that do not depend on the model
+	added  []table.Field
+	needs  []Need
+
+	terms     Term   // of all columns
+	bandTerms []Term // of each band
+	selected  []bool // whether any column of each selection is there
+	cutBands  []int  // index of each cut's band
+	stats     []*Entry
 }
 
 // model is one cosmology and the columns it gives.
 type model struct {
 	*cosmo.Model
-	uses    cosmo.Quantity
-	scales  Scales
-	columns []output
+	uses      cosmo.Quantity
+	scales    Scales
+	columns   []output
+	surveyors []surveyor
 }
 
-// output is one added column: its entry and its place in Batch.Out.
+// output is one added column: its entry, the member of its family, and its
+// place in Batch.Out.
 type output struct {
 	entry *Entry
+	item  int
 	at    int
 }
 
 // New makes the kernel of a job. The tables of its models are built here.
 func New(j *job.Job) *Kernel {
-	k := &Kernel{settings: &j.Settings, needs: needs(&j.Settings), place: j.Place}
-	wanted := make(map[string]bool)
-	for _, name := range j.Settings.Added {
-		wanted[name] = true
+	k := &Kernel{job: j, bandTerms: make([]Term, len(j.Bands)), selected: make([]bool, len(j.Selections))}
+	for i := range j.Settings.Cuts {
+		k.cutBands = append(k.cutBands, j.Band(j.Settings.Cuts[i].Band))
 	}
+	wanted := k.wanted()
 	for i, m := range j.Models {
 		c := model{Model: m, scales: scales(m, j.Settings.LengthUnit)}
-		suffix := j.Settings.Cosmologies[i].Suffix
-		for e := range registry {
-			entry := &registry[e]
+		for _, in := range wanted {
 			switch {
-			case !wanted[entry.Name]:
-			case entry.Scope == PerModel:
-				c.uses |= entry.Uses
-				c.columns = append(c.columns, k.add(entry, suffix))
+			case in.Scope == PerModel:
+				c.uses |= in.Uses
+				c.columns = append(c.columns, k.add(in, j.Settings.Cosmologies[i].Suffix))
 			case i == 0:
-				k.once = append(k.once, k.add(entry, ""))
+				k.once = append(k.once, k.add(in, ""))
+			}
+		}
+		for s := range j.Selections {
+			if k.selected[s] {
+				c.uses |= cosmo.Volume
 			}
 		}
 		c.Prepare(c.uses)
+		for s := range j.Selections {
+			if k.selected[s] {
+				c.surveyors = append(c.surveyors, newSurveyor(&j.Selections[s], m, j.Bands))
+			} else {
+				c.surveyors = append(c.surveyors, surveyor{})
+			}
+		}
 		k.models = append(k.models, c)
 	}
-	k.add(&statusEntry, "")
+	k.add(instance{Entry: &statusEntry, name: StatusName}, "")
+	k.needs = k.listNeeds()
 	return k
 }
 
+// wanted lists the job's columns, and notes what they read.
+func (k *Kernel) wanted() []instance {
+	named := make(map[string]bool)
+	for _, name := range k.job.Settings.Added {
+		named[name] = true
+	}
+	var list []instance
+	for _, in := range instances(&k.job.Settings) {
+		if !named[in.name] {
+			continue
+		}
+		list = append(list, in)
+		k.terms |= in.Terms
+		switch in.Family {
+		case PerBand:
+			k.bandTerms[in.item] |= in.Terms
+		case PerCut:
+			k.bandTerms[k.cutBands[in.item]] |= in.Terms
+		case PerSelection:
+			k.selected[in.item] = true
+			k.selectionTerms(&k.job.Selections[in.item])
+		}
+	}
+	return list
+}
+
+// selectionTerms notes what a selection reads of its bands.
+func (k *Kernel) selectionTerms(p *job.SelectionPlan) {
+	for i := range p.Limits {
+		terms := apparentTerm | evolutionTerm
+		if p.SelectionSettings.Limits[i].K == nil {
+			terms |= kTerm
+		}
+		if p.Corrected {
+			terms |= extinctionTerm
+		}
+		k.bandTerms[p.Limits[i].Band] |= terms
+	}
+}
+
 // add appends the field of a column.
-func (k *Kernel) add(e *Entry, suffix string) output {
+func (k *Kernel) add(in instance, suffix string) output {
+	e, s := in.Entry, &k.job.Settings
 	field := table.Field{
-		Name: k.settings.Prefix + e.Name + suffix, Kind: e.Kind(), Unit: e.Unit.VOUnit(k.settings.LengthUnit), UCD: e.UCD,
+		Name: s.Prefix + in.name + suffix, Kind: e.Kind(), Unit: e.Unit.VOUnit(s.LengthUnit), UCD: e.UCD,
 		Description: e.Doc, Source: e.From,
 	}
-	if note := e.Unit.Note(k.settings.LengthUnit); note != "" {
+	if note := e.Unit.Note(s.LengthUnit); note != "" {
 		field.Description += "; " + note
 	}
 	if e == &statusEntry {
 		field.Kind = table.Int
 	}
 	k.added = append(k.added, field)
-	return output{e, len(k.added) - 1}
+	k.stats = append(k.stats, e)
+	return output{e, in.item, len(k.added) - 1}
 }
 
 // Added returns the added columns in output order, the status column last.
@@ -152,32 +147,82 @@ func (k *Kernel) Added() []table.Field { return k.added }
 
 // A Scratch is the working memory of one worker.
 type Scratch struct {
-	rows Rows
-	base Base
-	out  []float64
+	bound *Bound // whose rows it was made for
+	rows  Rows
+	base  Base
 }
 
-// NewScratch returns the working memory for one worker.
-func NewScratch() *Scratch {
-	s := new(Scratch)
-	s.rows.ZCos, s.rows.ZModel = make([]float64, span), make([]float64, span)
-	s.rows.ZObs, s.rows.XObs = make([]float64, span), make([]float64, span)
-	s.base.angularBuf, s.base.luminosityBuf = make([]float64, span), make([]float64, span)
-	s.base.Rows = &s.rows
-	return s
+// Run computes every added column of a decoded batch, and counts it.
+func (b *Bound) Run(batch *table.Batch, s *Scratch, tally Tally) {
+	s.fit(b)
+	for i, sentinels := range b.sentinels {
+		dropSentinels(&batch.In[i], sentinels)
+	}
+	bits := batch.Out[len(b.added)-1].Int
+	clear(bits)
+	for lo := 0; lo < batch.Rows; lo += span {
+		hi := min(lo+span, batch.Rows)
+		s.rows.Status = bits[lo:hi]
+		b.redshift.fill(batch, &s.rows, lo, hi)
+		s.rows.fillTerms(batch, lo, hi)
+		b.compute(batch, s, lo, hi)
+		tally.count(batch, &s.rows, lo, hi)
+	}
 }
 
-// compute fills the output columns for rows lo to hi of the batch, whose
-// redshifts are in s.rows.
+// fit gives the scratch the memory that a bound kernel needs.
+func (s *Scratch) fit(b *Bound) {
+	if s.bound == b {
+		return
+	}
+	*s = Scratch{bound: b}
+	s.rows.buffers.allocate()
+	j := b.job
+	for i := range j.Bands {
+		s.rows.bands = append(s.rows.bands, newBandRows(&j.Bands[i], b.where, b.bandTerms[i]))
+	}
+	values := func(kind string, term Term, names []string) (rows []valueRows) {
+		for _, name := range names {
+			rows = append(rows, valueRows{at: b.where(job.OtherRole(kind, name, job.PartValue)), used: b.terms&term != 0})
+		}
+		return rows
+	}
+	s.rows.lines = values("line", lineTerm, j.Settings.LineNames())
+	s.rows.radios = values("radio", radioTerm, j.Settings.RadioNames())
+	s.rows.sizes = values("size", sizeTerm, j.Settings.SizeNames())
+	for i := range j.Selections {
+		s.rows.selections = append(s.rows.selections, newSelectionRows(&j.Selections[i], j.Bands, b.where, b.selected[i]))
+	}
+	s.base = newBase(&s.rows, b.Kernel)
+}
+
+// fillTerms computes what columns read besides redshifts.
+func (r *Rows) fillTerms(batch *table.Batch, lo, hi int) {
+	for i := range r.bands {
+		r.bands[i].fill(batch, r, lo, hi)
+	}
+	for _, list := range [][]valueRows{r.lines, r.radios, r.sizes} {
+		for i := range list {
+			list[i].fill(batch, lo, hi)
+		}
+	}
+	for i := range r.selections {
+		r.selections[i].fill(batch, lo, hi)
+	}
+}
+
+// compute fills the output columns for rows lo to hi of the batch.
 func (k *Kernel) compute(b *table.Batch, s *Scratch, lo, hi int) {
 	for _, o := range k.once {
+		s.base.item = o.item
 		k.column(o, &s.base, b, lo, hi)
 	}
 	for i := range k.models {
 		m := &k.models[i]
 		m.Fill(&s.base.Base, m.uses, s.rows.ZModel)
-		s.base.Scales, s.base.angularDone, s.base.luminosityDone = &m.scales, false, false
+		s.base.begin(m)
 		for _, o := range m.columns {
+			s.base.item = o.item
 			k.column(o, &s.base, b, lo, hi)
 		}
 	}
@@ -207,22 +252,28 @@ func (k *Kernel) column(o output, base *Base, b *table.Batch, lo, hi int) {
 	}
 }
 
-// blame gives the reason for a null cell. Where the row's own bits explain it
-// nothing is added: a bad redshift, or a redshift that is not positive. What
-// is left is a quantity that the model does not have: a divergent age, an
-// event horizon, a time after the universe's end.
+// blame gives the reason for a null cell. Mostly the row's own bits explain it,
+// or those of the terms, and nothing is added. What is left is a quantity that
+// the model does not have: a divergent age, an event horizon, a time after the
+// universe's end.
 func (r *Rows) blame(e *Entry, i int) {
 	const explains = status.Row &^ status.NotPositive
+	bits := r.Status[i]
 	switch {
-	case r.Status[i]&explains != 0:
-	case r.Status[i]&status.NotPositive != 0 && (e.Scope == Once || r.ZModel[i] != r.ZModel[i] || r.ZModel[i] <= 0 && e.zeroNull()):
+	case bits&explains != 0:
+	case bits&^status.Row&^status.NoSuch != 0 && e.reads():
+	case bits&status.NotPositive != 0 && (e.Scope == Once || r.ZModel[i] != r.ZModel[i] || r.ZModel[i] <= 0 && e.zeroNull()):
 	default:
 		r.Status[i] |= status.NoSuch
 	}
 }
 
+// reads reports whether the column can be null for a reason that is a term's.
+func (e *Entry) reads() bool { return e.Terms != 0 }
+
 // zeroNull reports whether the column has no meaning at z <= 0 in any model:
-// the modulus (no distance) and the age at which contact is lost.
+// a magnitude (no distance), what is made of it, and the age at which contact
+// is lost.
 func (e *Entry) zeroNull() bool {
-	return e.Unit == Magnitude || e.Uses&cosmo.ContactLost != 0
+	return e.Unit == Magnitude || e.Family != Single || e.Uses&cosmo.ContactLost != 0
 }

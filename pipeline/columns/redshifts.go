@@ -3,7 +3,9 @@ package columns
 import (
 	"math"
 
+	"catenrich/cosmo"
 	"catenrich/internal/exact"
+	"catenrich/pipeline/job"
 )
 
 // redshifts are the columns about the redshift itself. They come after the
@@ -25,4 +27,43 @@ var redshifts = []Entry{
 		From: "Davis et al. 2011; Planck 2018 results I, Table 3 (the Sun's motion)",
 		Eval: func(b *Base, out []float64) { copy(out, b.Rows.ZCos) },
 	},
+	{
+		Name: "comoving_x", Group: "positions", Scope: PerModel, Unit: Length, UCD: "pos.cartesian.x;phys.cosmology",
+		Doc:  "comoving position, toward right ascension 0, declination 0 (ICRS)",
+		From: "Hogg 1999, eq. 15, times the unit vector", Uses: cosmo.DC, Terms: directionTerm, Missing: noPositions,
+		Eval: func(b *Base, out []float64) { along(out, b, b.Rows.Toward.X) },
+	},
+	{
+		Name: "comoving_y", Group: "positions", Scope: PerModel, Unit: Length, UCD: "pos.cartesian.y;phys.cosmology",
+		Doc:  "comoving position, toward right ascension 90 degrees, declination 0 (ICRS)",
+		From: "Hogg 1999, eq. 15, times the unit vector", Uses: cosmo.DC, Terms: directionTerm, Missing: noPositions,
+		Eval: func(b *Base, out []float64) { along(out, b, b.Rows.Toward.Y) },
+	},
+	{
+		Name: "comoving_z", Group: "positions", Scope: PerModel, Unit: Length, UCD: "pos.cartesian.z;phys.cosmology",
+		Doc:  "comoving position, toward the north celestial pole (ICRS)",
+		From: "Hogg 1999, eq. 15, times the unit vector", Uses: cosmo.DC, Terms: directionTerm, Missing: noPositions,
+		Eval: func(b *Base, out []float64) { along(out, b, b.Rows.Toward.Z) },
+	},
+}
+
+// along fills out with one component of the comoving position.
+func along(out []float64, b *Base, toward []float64) {
+	dc := b.DC[:len(out)]
+	for i := range out {
+		out[i] = dc[i] * b.Scales.Length * toward[i]
+	}
+}
+
+// noPositions says why comoving positions cannot be had.
+func noPositions(s *job.Settings, _ int) string {
+	if _, ok := s.Catalogue[job.RoleRightAscension]; !ok {
+		return "columns.right_ascension and columns.declination"
+	}
+	for i := range s.Cosmologies {
+		if c := &s.Cosmologies[i]; !c.Flat && (c.OmegaM+c.OmegaDE != 1 || c.CMBTemperature != 0) {
+			return "flat models: in a curved one there are no Cartesian coordinates"
+		}
+	}
+	return ""
 }

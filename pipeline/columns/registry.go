@@ -9,7 +9,6 @@
 package columns
 
 import (
-	"fmt"
 	"slices"
 
 	"catenrich/cosmo"
@@ -25,22 +24,48 @@ const (
 	PerModel              // once for each [[cosmology]]
 )
 
-// An Entry is one derived column.
-type Entry struct {
-	Name  string
-	Group string
-	Scope Scope
-	Unit  Unit
-	UCD   string
-	Doc   string // one line, what it is
-	From  string // the published source, with its equation number
+// A Family is what a column is repeated for. Its name then ends in the name of
+// each: absolute_magnitude_r.
+type Family uint8
 
-	// Uses are the quantities of the model that Eval reads from the base.
-	Uses cosmo.Quantity
+const (
+	Single Family = iota
+	PerBand
+	PerLine
+	PerRadio
+	PerSize
+	PerSelection
+	PerCut
+)
+
+// An Entry is one derived column, or one for each member of a family.
+type Entry struct {
+	Name   string
+	Group  string
+	Scope  Scope
+	Family Family
+	Unit   Unit
+	UCD    string
+	Doc    string // one line, what it is
+	From   string // the published source, with its equation number
+
+	// Uses are the quantities of the model that Eval reads from the base, and
+	// Terms what it reads of the rows besides their redshifts.
+	Uses  cosmo.Quantity
+	Terms Term
+
+	// Missing says why a job cannot have the column: what it does not set; ""
+	// if it can. item is the member of the family. A nil Missing is always.
+	Missing func(s *job.Settings, item int) string
 
 	// Eval fills out for the rows of the base. It allocates nothing. A cell
-	// that cannot be computed is NaN; the kernel finds out why.
+	// that cannot be computed is NaN; where the reason is one of the terms, its
+	// status bit has been set, else the kernel finds out why.
 	Eval func(b *Base, out []float64)
+
+	// Spread asks for the exact sum and the histogram of the column among the
+	// statistics; range and nulls are counted of every column.
+	Spread bool
 
 	// Test is the same for a column of flags: table.True, False or Null.
 	Test func(b *Base, out []uint8)
@@ -55,10 +80,49 @@ func (e *Entry) Kind() table.Kind {
 }
 
 // registry is every entry in table order, which is the order of the output.
-var registry = slices.Concat(distances, times, volumes, recession, redshifts)
+var registry = slices.Concat(distances, times, volumes, recession, redshifts, photometry, selections)
 
 // All returns the table of columns in table order, without the status column.
 func All() []Entry { return slices.Clone(registry) }
+
+// Pattern is the column's name as the documentation writes it.
+func (e *Entry) Pattern() string {
+	return e.Name + [...]string{"", "_<band>", "_<line>", "_<radio>", "_<size>", "_<selection>", "_<sample>"}[e.Family]
+}
+
+// members returns the names of the family's members in a job, in its order.
+func (f Family) members(s *job.Settings) []string {
+	var names []string
+	switch f {
+	case Single:
+		return []string{""}
+	case PerBand:
+		for i := range s.Bands {
+			names = append(names, "_"+s.Bands[i].Name)
+		}
+	case PerLine:
+		for i := range s.Lines {
+			names = append(names, "_"+s.Lines[i].Name)
+		}
+	case PerRadio:
+		for i := range s.Radios {
+			names = append(names, "_"+s.Radios[i].Name)
+		}
+	case PerSize:
+		for i := range s.Sizes {
+			names = append(names, "_"+s.Sizes[i].Name)
+		}
+	case PerSelection:
+		for i := range s.Selections {
+			names = append(names, "_"+s.Selections[i].Name)
+		}
+	case PerCut:
+		for i := range s.Cuts {
+			names = append(names, "_"+s.Cuts[i].Name)
+		}
+	}
+	return names
+}
 
 // StatusName is the column that says why the others are null. It is always
 // added, once, last.
@@ -73,64 +137,3 @@ var statusEntry = Entry{
 
 // Status returns the entry of the status column.
 func Status() Entry { return statusEntry }
-
-// groupAll asks for every column of the table.
-const groupAll = "all"
-
-// Groups returns the names of the groups in table order, "all" last.
-func Groups() []string {
-	var names []string
-	for i := range registry {
-		if !slices.Contains(names, registry[i].Group) {
-			names = append(names, registry[i].Group)
-		}
-	}
-	return append(names, groupAll)
-}
-
-// Catalog is the table of columns as the job package asks for it.
-type Catalog struct{}
-
-// Expand turns names and groups into column names in table order, each once.
-// A name that is neither is an error with the nearest names; so is a column
-// named twice, since one of the two was meant to be another.
-func (Catalog) Expand(_ *job.Settings, names []string) ([]string, []error) {
-	var wrong []error
-	wanted := make(map[string]bool)
-	listed := make(map[string]bool)
-	for _, name := range names {
-		if listed[name] {
-			wrong = append(wrong, fmt.Errorf("names %q twice", name))
-			continue
-		}
-		listed[name] = true
-		found := false
-		for i := range registry {
-			e := &registry[i]
-			if e.Name == name || e.Group == name || name == groupAll {
-				wanted[e.Name], found = true, true
-			}
-		}
-		if !found {
-			wrong = append(wrong, unknown(name))
-		}
-	}
-	var expanded []string
-	for i := range registry {
-		if wanted[registry[i].Name] {
-			expanded = append(expanded, registry[i].Name)
-		}
-	}
-	return expanded, wrong
-}
-
-func unknown(name string) error {
-	if name == StatusName {
-		return fmt.Errorf("names %q, which is always added", name)
-	}
-	known := Groups()
-	for i := range registry {
-		known = append(known, registry[i].Name)
-	}
-	return fmt.Errorf("names %q, which is no column and no group; the nearest are %s", name, table.Quote(table.Nearest(name, known, 3)))
-}

@@ -8,31 +8,54 @@ import (
 // redshiftHistogram is the statistic that n(z) is drawn from.
 const redshiftHistogram = "cosmological_redshift"
 
-// NewTally returns the empty counts of the kernel's columns. Each worker has
-// its own.
-func (k *Kernel) NewTally() *ledger.Tally {
+// A Tally is what is counted of the kernel's columns. Each worker has its own.
+type Tally struct{ *ledger.Tally }
+
+// NewTally returns empty counts.
+func (k *Kernel) NewTally() Tally {
 	t := &ledger.Tally{
 		Extents:    map[string]*ledger.Extent{redshiftHistogram: new(ledger.Extent)},
 		Histograms: map[string]*ledger.Histogram{redshiftHistogram: ledger.NewHistogram(ledger.RedshiftAxis())},
 	}
 	for i := range k.added {
-		c := ledger.NewColumn(k.added[i].Name, false)
+		name, e := k.added[i].Name, k.stats[i]
+		c := ledger.NewColumn(name, false)
 		if k.added[i].Kind == table.Float {
 			c.Extent = new(ledger.Extent)
 		}
+		if e.Spread {
+			c.Sum = new(ledger.Sum)
+		}
+		if axis, ok := e.axis(name); ok {
+			t.Histograms[name] = ledger.NewHistogram(axis)
+		}
 		t.Columns = append(t.Columns, c)
 	}
-	return t
+	return Tally{t}
+}
+
+// axis is what a column's histogram is drawn on, if it has one.
+func (e *Entry) axis(name string) (a ledger.Axis, ok bool) {
+	switch {
+	case e.Unit == Magnitude && e.Scope == PerModel:
+		return ledger.MagnitudeAxis(name), true
+	case e.Spread && e.Unit == None:
+		return ledger.FractionAxis(name), true
+	}
+	return a, false
 }
 
 // count adds rows lo to hi of a batch, which are still in the cache.
-func count(t *ledger.Tally, batch *table.Batch, r *Rows, lo, hi int) {
+func (t Tally) count(batch *table.Batch, r *Rows, lo, hi int) {
 	t.AddRows(r.Status)
 	t.Extents[redshiftHistogram].Add(r.ZCos)
 	t.Histograms[redshiftHistogram].Add(r.ZCos)
 	for i, c := range t.Columns {
 		cells := part(&batch.Out[i], lo, hi)
 		c.Add(&cells, r.Status)
+		if h := t.Histograms[c.Name]; h != nil {
+			h.Add(cells.Float)
+		}
 	}
 }
 

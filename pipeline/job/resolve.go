@@ -43,6 +43,11 @@ func (j *Job) RolePath(role Role) string {
 	return "columns." + string(role)
 }
 
+// Band is the index of the band called name, or -1.
+func (j *Job) Band(name string) int {
+	return slices.IndexFunc(j.Bands, func(b BandPlan) bool { return b.Name == name })
+}
+
 // A Catalog knows the columns that can be added. Expand turns the names and
 // groups the user asked for into column names in table order; every name it
 // does not know is one error.

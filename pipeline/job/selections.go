@@ -161,13 +161,7 @@ func (r *resolver) area(path string, in *Selection, p *SelectionPlan) {
 
 // limit resolves one band's limits.
 func (r *resolver) limit(path, name string, in *Limit, redshift Numbers) (s LimitSettings, p LimitPlan, ok bool) {
-	p.Band = -1
-	for i := range r.job.Bands {
-		if r.job.Bands[i].Name == in.Band {
-			p.Band = i
-		}
-	}
-	if p.Band < 0 {
+	if p.Band = r.job.Band(in.Band); p.Band < 0 {
 		r.fail(path+".band", "is %q, and no [[band]] has that name", in.Band)
 		return s, p, false
 	}
@@ -219,11 +213,8 @@ func (r *resolver) cut(path string, in *Cut) CutSettings {
 	} else {
 		s.BrighterThan = r.finite(path+".brighter_than", *in.BrighterThan)
 	}
-	for i := range r.job.Bands {
-		if r.job.Bands[i].Name == in.Band {
-			return s
-		}
+	if r.job.Band(in.Band) < 0 {
+		r.fail(path+".band", "is %q, and no [[band]] has that name", in.Band)
 	}
-	r.fail(path+".band", "is %q, and no [[band]] has that name", in.Band)
 	return s
 }
