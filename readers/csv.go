@@ -114,9 +114,9 @@ type CSV struct {
 
 	feed    *feed
 	text    io.Reader // the feed, decompressed
-	release func()    // of the decompressor
 	ended   bool      // text has ended
-	stash   []byte    // text that was read beyond the last chunk
+	stash   []byte    // text that was read beyond the last chunk,
+	stashed int       // and how much of it has been taken again
 	seq     int64
 	offset  int64 // of the next chunk
 	line    int64 // of the next chunk
@@ -178,7 +178,7 @@ func open(s *CSV, r io.ReadCloser, o CSVOptions) (*CSV, error) {
 	s.dialect, _ = o.dialects()
 	s.line = 1
 	s.feed = newFeed(r)
-	s.text, s.release = s.feed, func() {}
+	s.text = s.feed
 	err := s.decompress()
 	if err == nil {
 		err = s.readHead()
@@ -210,7 +210,7 @@ func (s *CSV) decompress() error {
 		if err != nil {
 			return s.readError(err)
 		}
-		s.text, s.release = z, z.Close
+		s.text = z
 	}
 	return nil
 }
@@ -286,7 +286,7 @@ func (s *CSV) Next(ctx context.Context) (*table.Chunk, error) {
 // cutChunk fills c.buffer with text, and returns how much of it is a chunk.
 // The rest goes back to the stash. With an error, the chunk is the last.
 func (s *CSV) cutChunk(c *csvChunk) (n int, err error) {
-	filled := 0
+	filled, taken := 0, s.stashed
 	for size := s.options.BlockSize; ; size = min(2*size, MaxRecord+1) {
 		if filled, err = s.fill(c, filled, size); err != nil {
 			return 0, err
@@ -295,13 +295,19 @@ func (s *CSV) cutChunk(c *csvChunk) (n int, err error) {
 			return 0, io.EOF
 		}
 		block := c.buffer[:filled]
-		all := s.ended && len(s.stash) == 0
+		all := s.ended && s.stashed == len(s.stash)
 		n, open := s.dialect.Cut(block, all)
+		if n > 0 && size > s.options.BlockSize {
+			// A long record is a chunk of its own: what was read with it may
+			// hold more lines than a batch should.
+			_, n, _, _ = s.dialect.First(block)
+			open = -1
+		}
 		switch {
 		case open >= 0 && all:
 			return n, s.unclosed(block, open)
 		case n > 0:
-			s.putBack(block[n:])
+			s.putBack(block[n:], filled == s.stashed-taken)
 			return n, nil
 		case size > MaxRecord:
 			return 0, s.tooLong(block, open)
@@ -317,10 +323,10 @@ func (s *CSV) fill(c *csvChunk, filled, size int) (int, error) {
 		c.buffer = bigger
 	}
 	c.buffer = c.buffer[:size]
-	n := copy(c.buffer[filled:], s.stash)
-	s.stash = s.stash[n:]
+	n := copy(c.buffer[filled:], s.stash[s.stashed:])
+	s.stashed += n
 	filled += n
-	if filled == size || s.ended {
+	if s.ended {
 		return filled, nil
 	}
 	for filled < size {
@@ -340,16 +346,17 @@ func (s *CSV) fill(c *csvChunk, filled, size int) (int, error) {
 	return filled, nil
 }
 
-// putBack returns text to the front of the stash.
-func (s *CSV) putBack(text []byte) {
-	if len(text) == 0 {
+// putBack returns text to the front of the stash; again says that all of it
+// came from there, and still stands there.
+func (s *CSV) putBack(text []byte, again bool) {
+	if again {
+		s.stashed -= len(text)
 		return
 	}
-	if len(s.stash) == 0 {
-		s.stash = append(s.stash[:0], text...)
-		return
+	if cap(s.stash) > 4*s.options.BlockSize && len(text) <= s.options.BlockSize {
+		s.stash = nil // of a long record
 	}
-	s.stash = append(append(make([]byte, 0, len(text)+len(s.stash)), text...), s.stash...)
+	s.stash, s.stashed = append(s.stash[:0], text...), 0
 }
 
 func (s *CSV) unclosed(block []byte, open int) error {

@@ -41,10 +41,14 @@ func (s *CSV) Decode(c *table.Chunk, b *table.Batch) error {
 	}
 	d := decoder{CSV: s, raw: c.Raw, batch: b, rows: s.Rows(c), at: (*at)[:s.located]}
 	d.rows.reset()
-	b.Reset(c.Rows, s.wants, s.added)
-
 	lines := s.dialect.Lines(c.Raw)
 	quotes := lines.Quotes()
+	rows := c.Rows
+	if quotes || rows > len(c.Raw)/4 { // most line ends may end no row
+		rows = int(s.countRows(c))
+	}
+	b.Reset(rows, s.wants, s.added)
+
 	number := c.Line
 	plain := !quotes // then every line is one line
 	for pos := 0; pos < len(c.Raw); {
@@ -129,7 +133,7 @@ func (d *decoder) badCell(field, row int, line int64, value []byte) {
 
 // reject adds a record that has no row.
 func (d *decoder) reject(c *table.Chunk, pos, end, next int, line int64, n int, err error) {
-	reason := fmt.Sprintf("%d fields, and the file has %d columns", n, len(d.schema.Fields))
+	reason := fmt.Sprintf("its field count is %d, want %d", n, len(d.schema.Fields))
 	if err != nil {
 		reason = err.Error()
 	}

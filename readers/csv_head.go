@@ -39,7 +39,7 @@ func (s *CSV) readHead() error {
 			return err
 		}
 		if done {
-			s.stash = append([]byte(nil), text[len(s.head.text):]...)
+			s.putBack(text[len(s.head.text):], false)
 			s.line += int64(delim.CountLineEnds(s.head.text))
 			s.offset = int64(len(s.head.text))
 			return nil

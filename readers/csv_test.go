@@ -407,6 +407,51 @@ func TestLongFieldsAndManyColumns(t *testing.T) {
 	}
 }
 
+// TestLinesThatAreNoRowsCostNothing: the memory of a batch is that of its rows.
+func TestLinesThatAreNoRowsCostNothing(t *testing.T) {
+	for name, text := range map[string]string{
+		"line ends within quotes":      "z,a\n1,\"" + strings.Repeat("\n", 3<<20) + "\"\n",
+		"blank lines":                  "z,a\n" + strings.Repeat("\n", 3<<20),
+		"blank lines after a long one": "z,a\n1," + strings.Repeat("x", 3<<20) + strings.Repeat("\n", 3<<20) + "1,2\n",
+	} {
+		t.Run(name, func(t *testing.T) {
+			s, err := readers.NewCSV("in", io.NopCloser(strings.NewReader(text)), readers.CSVOptions{})
+			if err != nil {
+				t.Fatal(err)
+			}
+			defer s.Close()
+			s.Select([]table.Want{{Field: 0, As: table.Float}}, nil)
+			var b table.Batch
+			lines := int64(1)
+			for {
+				c, err := s.Next(context.Background())
+				if err == io.EOF {
+					break
+				}
+				if err != nil {
+					t.Fatal(err)
+				}
+				if err := s.Decode(c, &b); err != nil {
+					t.Fatal(err)
+				}
+				if cap(b.In[0].Float) > 100 {
+					t.Fatalf("chunk %d has room for %d rows, and has %d", c.Seq, cap(b.In[0].Float), b.Rows)
+				}
+				if c.Line != lines+1 {
+					t.Fatalf("chunk %d begins on line %d, want %d", c.Seq, c.Line, lines+1)
+				}
+				lines += int64(bytes.Count(c.Raw, []byte("\n")))
+				s.Release(c)
+			}
+			if want := int64(strings.Count(text, "\n")); lines != want {
+				t.Errorf("%d lines, want %d", lines, want)
+			}
+		})
+	}
+}
+
+var xs = bytes.Repeat([]byte("x"), 1<<20)
+
 // endless is a record that never ends.
 type endless struct{ head io.Reader }
 
@@ -414,10 +459,7 @@ func (e endless) Read(p []byte) (int, error) {
 	if n, err := e.head.Read(p); err == nil {
 		return n, nil
 	}
-	for i := range p {
-		p[i] = 'x'
-	}
-	return len(p), nil
+	return copy(p, xs), nil
 }
 func (endless) Close() error { return nil }
 

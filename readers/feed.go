@@ -5,6 +5,7 @@ import (
 	"crypto/sha256"
 	"errors"
 	"io"
+	"sync"
 	"sync/atomic"
 )
 
@@ -50,6 +51,13 @@ const (
 	feedBlocks    = 8
 )
 
+// feedMemory keeps blocks from one input to the next: inputs may be many and
+// small.
+var feedMemory = sync.Pool{New: func() any {
+	p := make([]byte, feedBlockSize)
+	return &p
+}}
+
 func newFeed(src io.ReadCloser) *feed {
 	f := &feed{
 		src:      src,
@@ -82,7 +90,7 @@ func (f *feed) read(toDigest chan<- feedBlock) {
 			return
 		}
 		if p == nil {
-			p = make([]byte, feedBlockSize)
+			p = *feedMemory.Get().(*[]byte)
 		}
 		n, err := f.src.Read(p)
 		b := feedBlock{&sharedBlock{bytes: p}, n, err}
@@ -168,9 +176,19 @@ func (f *feed) Close(wait bool) error {
 	}
 	close(f.quit)
 	err := f.src.Close()
-	if wait {
-		<-f.gone
-		<-f.digested
+	if !wait {
+		return err
 	}
-	return err
+	<-f.gone
+	<-f.digested
+	for {
+		select {
+		case p := <-f.free:
+			if p != nil {
+				feedMemory.Put(&p)
+			}
+		default:
+			return err
+		}
+	}
 }

@@ -38,7 +38,7 @@ func (l *Lines) Quotes() bool { return l.quotes }
 // the length of the text.
 func (l *Lines) Next(pos int) (end, next int) {
 	if l.loneCR {
-		s := l.dialect.scan(l.text, pos)
+		s := l.dialect.scan(l.text, pos, true)
 		return s.end, s.next
 	}
 	i := bytes.IndexByte(l.text[pos:], '\n')
@@ -47,7 +47,7 @@ func (l *Lines) Next(pos int) (end, next int) {
 	}
 	end = pos + i
 	if l.quotes && bytes.IndexByte(l.text[pos:end], '"') >= 0 {
-		s := l.dialect.scan(l.text, pos)
+		s := l.dialect.scan(l.text, pos, false)
 		return s.end, s.next
 	}
 	next = end + 1
@@ -67,10 +67,11 @@ type scanned struct {
 	open      int  // the quote that is not closed, or -1
 }
 
-// scan finds the end of the line that begins at pos the thorough way.
-func (d *Dialect) scan(text []byte, pos int) scanned {
+// scan finds the end of the line that begins at pos the thorough way. loneCR
+// says that text may hold a CR without LF.
+func (d *Dialect) scan(text []byte, pos int, loneCR bool) scanned {
 	quotes := d.Quote && !d.IsComment(text[pos:])
-	i, end := pos, lineEnd(text, pos)
+	i, end := pos, lineEnd(text, pos, loneCR)
 	for quotes {
 		q := bytes.IndexByte(text[i:end], '"')
 		if q < 0 {
@@ -87,7 +88,7 @@ func (d *Dialect) scan(text []byte, pos int) scanned {
 		}
 		i = shut + 1
 		if i > end {
-			end = lineEnd(text, i)
+			end = lineEnd(text, i, loneCR)
 		}
 	}
 	switch {
@@ -127,7 +128,17 @@ func closing(text []byte, i int) int {
 
 // lineEnd returns the place of the first LF or CR at or after i, or the length
 // of text.
-func lineEnd(text []byte, i int) int {
+func lineEnd(text []byte, i int, loneCR bool) int {
+	if !loneCR {
+		j := bytes.IndexByte(text[i:], '\n')
+		if j < 0 {
+			return len(text)
+		}
+		if j > 0 && text[i+j-1] == '\r' {
+			j--
+		}
+		return i + j
+	}
 	for j, c := range text[i:] {
 		if c == '\n' || c == '\r' {
 			return i + j
@@ -140,7 +151,7 @@ func lineEnd(text []byte, i int) int {
 // whether both are certain whatever follows text; open is the place of a quote
 // that is not closed in text, or -1.
 func (d *Dialect) First(text []byte) (end, next int, whole bool, open int) {
-	s := d.scan(text, 0)
+	s := d.scan(text, 0, true)
 	return s.end, s.next, s.whole, s.open
 }
 
@@ -172,7 +183,7 @@ func (d *Dialect) hasComments(text []byte) bool {
 // cutByLine is Cut where comments may hold quotes that mean nothing.
 func (d *Dialect) cutByLine(text []byte) (n, open int) {
 	for n < len(text) {
-		s := d.scan(text, n)
+		s := d.scan(text, n, true)
 		if !s.whole {
 			return n, s.open
 		}

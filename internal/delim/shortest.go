@@ -48,7 +48,7 @@ func shortest(floatBits uint64, mantissaBits, bias int) (digits uint64, exponent
 	nearer := bit(mid > half) | bit(mid == half)&s
 	up := above
 	if below == above {
-		up = nearer & 1
+		up = nearer
 	}
 	digits = s + up
 
