@@ -93,7 +93,7 @@ func (c *curve) findPieces() {
 		case !known:
 			rising, known = wn >= w, true
 		case wn != w && (wn > w) != rising:
-			zt := c.turn(before, next, rising)
+			zt := c.turn(before, next, rising, 1)
 			p.zhi, p.whi = zt, c.at(zt, 1)
 			c.pieces = append(c.pieces, p)
 			p = piece{zlo: zt, wlo: p.whi}
@@ -105,22 +105,22 @@ func (c *curve) findPieces() {
 	c.pieces = append(c.pieces, p)
 }
 
-// turn finds the maximum (or minimum) of w in [a, b] by golden section, to the
-// square root of the rounding, where w itself is exact.
-func (c *curve) turn(a, b float64, maximum bool) float64 {
+// turn finds the maximum (or minimum) in [a, b] of w at ratio q by golden
+// section, to the square root of the rounding, where w itself is exact.
+func (c *curve) turn(a, b float64, maximum bool, q float64) float64 {
 	const golden = 0.6180339887498949
 	better := func(u, v float64) bool { return (u > v) == maximum && u != v }
 	x1, x2 := b-golden*(b-a), a+float64(golden*(b-a))
-	w1, w2 := c.at(x1, 1), c.at(x2, 1)
+	w1, w2 := c.at(x1, q), c.at(x2, q)
 	for range 60 {
 		if better(w1, w2) {
 			b, x2, w2 = x2, x1, w1
 			x1 = b - float64(golden*(b-a))
-			w1 = c.at(x1, 1)
+			w1 = c.at(x1, q)
 		} else {
 			a, x1, w1 = x1, x2, w2
 			x2 = a + float64(golden*(b-a))
-			w2 = c.at(x2, 1)
+			w2 = c.at(x2, q)
 		}
 	}
 	return 0.5 * (a + b)

@@ -2,9 +2,9 @@ package selection
 
 import "math"
 
-// cellsPerMag cuts the inverse into cubics; one of 1/16 mag is good to 1e-9 in
+// cellsPerMag cuts the inverse into cubics; one of 1/64 mag is good to 1e-11 in
 // z where w is smooth.
-const cellsPerMag = 16
+const cellsPerMag = 64
 
 // An inverse is z as a function of w over a piece, cubics between equally
 // spaced w. It is a first guess and a slope; Newton's rule with w itself does
@@ -28,29 +28,31 @@ func (v *inverse) tabulate(c *curve, p *piece) {
 	if p.wlo > p.whi {
 		z[0], z[n] = p.zhi, p.zlo
 	}
-	ahead := 0.03 * (z[n] - z[0])
-	if z[n] > z[0] {
-		ahead = min(ahead, 0.03*z[0])
-	}
 	for i := 1; i < n; i++ {
 		w := lo + float64(i)/v.scale
 		f := func(x float64) float64 { return c.at(x, 1) - w }
-		end := z[i-1] + ahead
-		for math.Abs(end-z[i-1]) < math.Abs(z[n]-z[i-1]) && f(end) < 0 {
-			ahead *= 2
-			end = z[i-1] + ahead
-		}
-		if !(math.Abs(end-z[i-1]) < math.Abs(z[n]-z[i-1])) {
-			end = z[n]
-		}
-		z[i] = bracketed(f, z[i-1], end)
-		ahead = 1.2 * (z[i] - z[i-1])
+		z[i] = bracketed(f, z[i-1], v.beyond(f, z[i-1], z[n]))
 	}
 	for i := range v.cubics {
 		d := z[i+1] - z[i]
 		a, b := v.step(c, z[i], d), v.step(c, z[i+1], d)
 		v.cubics[i] = [4]float64{z[i], a, float64(3*d) - float64(2*a) - b, a + b - float64(2*d)}
 	}
+}
+
+// beyond returns a place between z and end where f is not negative any more,
+// close enough for a root to be found fast.
+func (v *inverse) beyond(f func(float64) float64, z, end float64) float64 {
+	for ahead := 0.03; ahead < 1; ahead *= 2 {
+		d := float64(ahead * min(z, math.Abs(end-z)))
+		if end < z {
+			d = -d
+		}
+		if f(z+d) >= 0 {
+			return z + d
+		}
+	}
+	return end
 }
 
 // step is dz for one cell by the slope at z, kept within reason where w turns.
@@ -80,13 +82,14 @@ func (v *inverse) guess(w float64) (z, slope float64, ok bool) {
 
 // bracketed finds the root of f between a and b, where it has opposite signs,
 // by Ridders' rule (Ridders 1979, IEEE Trans. Circuits Syst. 26, 979), to the
-// last digits. Where f(a) and f(b) have one sign it returns b.
+// last digits. Where f(a) and f(b) have one sign, as rounding can make them at the
+// very root, it returns the end where f is smaller.
 func bracketed(f func(float64) float64, a, b float64) float64 {
 	fa, fb := f(a), f(b)
-	if fa == 0 {
-		return a
-	}
-	if fb == 0 || (fa > 0) == (fb > 0) {
+	if fa == 0 || fb == 0 || (fa > 0) == (fb > 0) {
+		if math.Abs(fa) < math.Abs(fb) {
+			return a
+		}
 		return b
 	}
 	for range 200 {

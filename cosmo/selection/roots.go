@@ -120,20 +120,19 @@ func ratioOf(r []float64, i int) float64 {
 
 // outward finds zmax: from z up, the first place where w leaves [bright, faint].
 func (o *object) outward() float64 {
-	c, from := o.c, o.z
-	for i := c.pieceAt(o.z); i < len(c.pieces); i++ {
+	c, from, last := o.c, o.z, len(o.c.pieces)-1
+	for i := c.pieceAt(o.z); i <= last; i++ {
 		p := &c.pieces[i]
-		end := min(p.zhi, o.hi)
-		if i == len(c.pieces)-1 {
-			end = o.hi
+		way := way{fainter: p.whi > p.wlo, end: p.zhi, w: p.whi}
+		if i == last || p.zhi > o.hi {
+			o.endAt(&way, o.hi)
+		} else {
+			o.turnNear(&way)
 		}
-		if !(end >= from) {
-			break
+		if limit, ok := o.crossed(&way); ok {
+			return max(o.root(p, limit, from, max(way.end, from)), o.z)
 		}
-		if limit, ok := o.crossed(end, p.zhi, p.whi, p.whi > p.wlo); ok {
-			return max(o.root(p, limit, from, end), o.z)
-		}
-		from = end
+		from = max(way.end, from)
 	}
 	if o.hi < o.l.Zmax && o.faint <= math.MaxFloat64 {
 		return math.NaN() // K ends before the sample does
@@ -149,17 +148,16 @@ func (o *object) inward() float64 {
 	}
 	for i := c.pieceAt(o.z); i >= 0; i-- {
 		p := &c.pieces[i]
-		end := max(p.zlo, o.lo)
-		if i == 0 {
-			end = o.lo
+		way := way{fainter: p.wlo > p.whi, end: p.zlo, w: p.wlo}
+		if i == 0 || p.zlo < o.lo {
+			o.endAt(&way, o.lo)
+		} else {
+			o.turnNear(&way)
 		}
-		if !(end <= from) {
-			break
+		if limit, ok := o.crossed(&way); ok {
+			return min(o.root(p, limit, from, min(way.end, from)), o.z)
 		}
-		if limit, ok := o.crossed(end, p.zlo, p.wlo, p.whi < p.wlo); ok {
-			return min(o.root(p, limit, from, end), o.z)
-		}
-		from = end
+		from = min(way.end, from)
 	}
 	if o.lo > max(o.l.Zmin, least) && o.bright >= -math.MaxFloat64 {
 		return math.NaN()
@@ -167,29 +165,62 @@ func (o *object) inward() float64 {
 	return o.l.Zmin
 }
 
-// crossed reports whether w leaves the limits on the way to end, a way on which
-// it grows fainter or brighter throughout, and which limit it crosses. w at
-// zknown is wknown for q = 1; for other q that decides unless it is close.
-func (o *object) crossed(end, zknown, wknown float64, fainter bool) (limit float64, ok bool) {
-	limit = o.bright
-	if fainter {
-		limit = o.faint
+// A way leads to end, growing fainter or brighter throughout; there w is w.
+type way struct {
+	fainter bool
+	end, w  float64
+}
+
+// limit is the one that a way can cross.
+func (o *object) limit(v *way) float64 {
+	if v.fainter {
+		return o.faint
 	}
+	return o.bright
+}
+
+// undecided reports whether the limit is so close to w at rest that w of an
+// object with another q has to be computed.
+func (o *object) undecided(v *way) bool {
+	return o.q != 1 && math.Abs(o.limit(v)-v.w) <= 2*o.c.steep*math.Abs(o.q-1)+1e-9
+}
+
+// endAt ends a way at the end of what is known.
+func (o *object) endAt(v *way, end float64) {
+	moved := end != v.end
+	v.end = end
+	if o.q != 1 && (moved || o.undecided(v)) {
+		v.w = o.c.at(end, o.q)
+	}
+}
+
+// turnNear ends a way where w of this object turns: at another place than at
+// rest, if K makes it turn.
+func (o *object) turnNear(v *way) {
+	if !o.undecided(v) {
+		return
+	}
+	d := 2 * math.Abs(o.q-1) * (1 + v.end)
+	v.end = o.c.turn(max(v.end-d, o.lo), min(v.end+d, o.hi), v.fainter, o.q)
+	v.w = o.c.at(v.end, o.q)
+}
+
+// crossed returns the limit that is crossed on a way, if there is one.
+func (o *object) crossed(v *way) (limit float64, ok bool) {
+	limit = o.limit(v)
 	if limit-limit != 0 {
 		return limit, false
 	}
-	w := wknown
-	if o.q != 1 {
-		margin := 2*o.c.steep*math.Abs(o.q-1) + 1e-9
-		if end != zknown || math.Abs(limit-w) <= margin {
-			w = o.c.at(end, o.q)
-		}
+	if v.fainter {
+		return limit, v.w > limit
 	}
-	if fainter {
-		return limit, w > limit
-	}
-	return limit, w < limit
+	return limit, v.w < limit
 }
+
+// newtonDone is a relative step after which the next would be below rounding:
+// the slope comes from the table and is good to 1e-6, at a kink of K to
+// some per cent.
+const newtonDone = 1e-10
 
 // root finds where w is equal to limit, between from and end.
 func (o *object) root(p *piece, limit, from, end float64) float64 {
@@ -208,7 +239,7 @@ func (o *object) root(p *piece, limit, from, end float64) float64 {
 		}
 		d := float64((c.at(z, o.q) - limit) * slope)
 		z -= d
-		if math.Abs(d) <= 1e-7*z {
+		if math.Abs(d) <= newtonDone*z {
 			return min(max(z, lo), hi)
 		}
 	}

@@ -41,8 +41,8 @@ func models(t testing.TB) map[string]*cosmo.Model {
 
 // table is a K table with kinks, steep enough to make w turn.
 func table(t testing.TB, turning bool) photo.Correction {
-	z := []float64{0, 0.1, 0.25, 0.4, 0.8, 1, 1.1, 1.5, 3, 6}
-	k := []float64{0, 0.1, 0.3, 0.55, 1.2, 1.3, 1.31, 0.9, 1.5, 3}
+	z := []float64{-0.05, 0.1, 0.25, 0.4, 0.8, 1, 1.1, 1.5, 3, 6}
+	k := []float64{-0.03, 0.1, 0.3, 0.55, 1.2, 1.3, 1.31, 0.9, 1.5, 3}
 	if turning {
 		k[5], k[6], k[7] = 2.2, 0.3, -0.8
 	}
