@@ -159,7 +159,7 @@ func kTable() []byte {
 			if z < 1.5 {
 				z = round(z+0.005, 3)
 			} else {
-				z = round(z+0.02, 3)
+				z = round(z+0.01, 3)
 			}
 		}
 	}

@@ -53,6 +53,18 @@ func TestPopulation(t *testing.T) {
 			z, m = append(z, r.fact("z_cos")), append(m, r.fact("abs_mag_r"))
 		}
 	}
+	total := checkPopulation(t, z, m)
+	// 28.1227 deg2 of 4 pi: the count fixes phi*, which the truth states.
+	volume := 28.1227 * sq(math.Pi/180) / 3 * total
+	if got, want := survey20k(t).phiStar(t), float64(len(z))/volume; math.Abs(got/want-1) > 2e-3 { // 7 broken records, steps of 0.03 mag
+		t.Errorf("phi* in the truth = %g, want %g", got, want)
+	}
+}
+
+// checkPopulation tests the distributions of z_cos and of M in r, and returns
+// how many galaxies there would be with phi* = 1, times 3, per steradian.
+func checkPopulation(t *testing.T, z, m []float64) float64 {
+	t.Helper()
 	bright := func(z float64) float64 { // galaxies per volume above the limit
 		sum := 0.0
 		for template, share := range shares {
@@ -86,11 +98,7 @@ func TestPopulation(t *testing.T) {
 			t.Errorf("%s of main: KS %.2f against the luminosity function, want below 1.63", c.name, ks)
 		}
 	}
-	// 28.1227 deg2 of 4 pi: the count fixes phi*, which the truth states.
-	volume := 28.1227 * (math.Pi / 180) * (math.Pi / 180) / 3 * total
-	if got, want := survey20k(t).phiStar(t), float64(len(z))/volume; math.Abs(got/want-1) > 2e-3 { // 7 broken records, steps of 0.03 mag
-		t.Errorf("phi* in the truth = %g, want %g", got, want)
-	}
+	return total
 }
 
 func (s *defaultSurvey) phiStar(t *testing.T) float64 {
@@ -191,21 +199,60 @@ func selection(all []measured, limit float64) (chosen []measured, ratios []float
 func TestVolumes(t *testing.T) {
 	all := measuredMain(t)
 	for _, limit := range []float64{18.5, 19.0, 19.5} {
-		_, ratios, mean := selection(all, limit)
-		error := 1 / math.Sqrt(12*float64(len(ratios)))
-		t.Logf("r < %.1f: <V/Vmax> = %.4f ± %.4f of %d", limit, mean, error, len(ratios))
-		if math.Abs(mean-0.5) > 3*error {
-			t.Errorf("r < %.1f: <V/Vmax> = %.4f of %d, want 0.5 ± %.4f", limit, mean, len(ratios), 3*error)
-		}
-		uniform := func(x float64) float64 { return min(max(x, 0), 1) }
-		if ks := kolmogorov(ratios, uniform); !(ks < 1.63) {
-			t.Errorf("r < %.1f: V/Vmax is not uniform: KS %.2f, want below 1.63", limit, ks)
-		}
+		checkVolumes(t, all, limit)
 	}
 	_, ratios, mean := selection(all, 20.1)
 	if error := 1 / math.Sqrt(12*float64(len(ratios))); mean > 0.5-3*error {
 		t.Errorf("a limit of 20.1, where the survey is not complete, gives <V/Vmax> = %.4f: the test cannot fail", mean)
 	}
+}
+
+// checkVolumes tests that V/Vmax is uniform, with a mean of 0.5.
+func checkVolumes(t *testing.T, all []measured, limit float64) {
+	t.Helper()
+	_, ratios, mean := selection(all, limit)
+	error := 1 / math.Sqrt(12*float64(len(ratios)))
+	ks := kolmogorov(ratios, func(x float64) float64 { return min(max(x, 0), 1) })
+	t.Logf("r < %.1f: <V/Vmax> = %.4f ± %.4f of %d, KS %.2f", limit, mean, error, len(ratios), ks)
+	if !(math.Abs(mean-0.5) < 3*error) || !(ks < 1.63) {
+		t.Errorf("r < %.1f: <V/Vmax> = %.4f of %d with KS %.2f, want 0.5 ± %.4f and below 1.63", limit, mean, len(ratios), ks, 3*error)
+	}
+}
+
+// TestLargeSample repeats the checks of the population on 100 000 galaxies of
+// another seed: what is hidden by chance in the default survey would show.
+func TestLargeSample(t *testing.T) {
+	s, err := newSurvey(Options{Rows: 145000, Seed: DefaultSeed + 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	var tr truth
+	var rec record
+	var z, m, pulls []float64
+	var all []measured
+	for i := range s.slots {
+		s.make(i, &tr, &rec)
+		if tr.kind != galaxy || tr.deepField() {
+			continue
+		}
+		z, m = append(z, tr.zcos), append(m, tr.absolute[bandR])
+		if tr.defect != 0 || rec[colZFlag].number < flagGood {
+			continue
+		}
+		r := row{make(map[string]string), map[string]string{"abs_mag_r": strconv.FormatFloat(tr.absolute[bandR], 'g', -1, 64)}}
+		for _, c := range []int{colRA, colDec, colZBest, colZErr, colEBV, colEBVErr, colMagR, colMagErrR, colCompleteness} {
+			r.seen[columnNames[c]] = strconv.FormatFloat(rec[c].number, 'g', -1, 64)
+		}
+		r.seen["template"] = rec[colTemplate].text
+		g := measure(r)
+		all = append(all, g)
+		if g.zcmb > 0.02 {
+			pulls = append(pulls, (g.m-g.trueM)/g.sigma)
+		}
+	}
+	checkPopulation(t, z, m)
+	checkPulls(t, "M_r", pulls)
+	checkVolumes(t, all, 19.5)
 }
 
 // TestLuminosityFunction recovers the Schechter function by weights 1/(C Vmax)
