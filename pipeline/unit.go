@@ -284,6 +284,11 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	if err := w.sink.Finish(); err != nil {
 		return err
 	}
+	if s, ok := w.sink.(interface{ Warnings() []string }); ok {
+		for _, warning := range s.Warnings() {
+			w.watch.Warn(w.unit.Input + ": " + warning)
+		}
+	}
 	total := w.tallies[0].Tally
 	for _, t := range w.tallies[1:] {
 		if err := total.Merge(t.Tally); err != nil {

@@ -31,6 +31,18 @@ func formats() pipeline.Formats {
 				},
 			},
 		},
+		{
+			Name:     "parquet",
+			Suffixes: []string{".parquet", ".pq", ".parq"},
+			Open: func(path string, _ *job.InputSettings) (table.Source, error) {
+				return readers.OpenParquet(path)
+			},
+			Sinks: map[string]func(table.Source, string, table.Spec) (table.Sink, error){
+				"parquet": func(src table.Source, _ string, spec table.Spec) (table.Sink, error) {
+					return writers.NewParquet(src.(*readers.Parquet), spec)
+				},
+			},
+		},
 	}
 }
 

@@ -252,24 +252,21 @@ func (k *Kernel) column(o output, base *Base, b *table.Batch, lo, hi int) {
 	}
 }
 
-// blame gives the reason for a null cell. Mostly the row's own bits explain it,
-// or those of the terms, and nothing is added. What is left is a quantity that
-// the model does not have: a divergent age, an event horizon, a time after the
-// universe's end.
+// blame gives the reason for a null cell. Mostly the row's bits explain it: it
+// has no redshift, a column of the model has no meaning at its redshift, or a
+// term is missing. What is left is a quantity that the model does not have: a
+// divergent age, an event horizon, a time after the universe's end.
 func (r *Rows) blame(e *Entry, i int) {
-	const explains = status.Row &^ status.NotPositive
-	bits := r.Status[i]
+	bits, z := r.Status[i], r.ZModel[i]
+	nowhere := bits&status.NotPositive != 0 && (z != z || z <= 0 && e.zeroNull())
 	switch {
-	case bits&explains != 0:
-	case bits&^status.Row&^status.NoSuch != 0 && e.reads():
-	case bits&status.NotPositive != 0 && (e.Scope == Once || r.ZModel[i] != r.ZModel[i] || r.ZModel[i] <= 0 && e.zeroNull()):
+	case bits != 0 && (r.ZCos[i] != r.ZCos[i] || r.ZObs[i] != r.ZObs[i]):
+	case bits&status.Range != 0 || nowhere:
+	case bits&^status.Row&^status.NoSuch != 0 && e.Terms != 0:
 	default:
 		r.Status[i] |= status.NoSuch
 	}
 }
-
-// reads reports whether the column can be null for a reason that is a term's.
-func (e *Entry) reads() bool { return e.Terms != 0 }
 
 // zeroNull reports whether the column has no meaning at z <= 0 in any model:
 // a magnitude (no distance), what is made of it, and the age at which contact
