@@ -33,6 +33,14 @@ type Unit struct {
 	in, out *Format
 }
 
+// Name is what messages call the unit's input.
+func (u *Unit) Name() string {
+	if u.Input == Standard {
+		return "standard input"
+	}
+	return u.Input
+}
+
 // A Plan is what a run would do.
 type Plan struct {
 	Job        *job.Job
@@ -78,10 +86,10 @@ func NewPlan(j *job.Job, formats Formats) (*Plan, error) {
 // findUnits expands the patterns.
 func (p *Plan) findUnits(formats Formats) error {
 	seen := make(map[string]bool)
-	for i, pattern := range p.Job.Patterns {
+	for _, pattern := range p.Job.Patterns {
 		found, err := p.expand(pattern)
 		if err != nil {
-			return fault.NoInput.Errorf("%s: %w", p.Job.Place(fmt.Sprintf("input.files[%d]", i)), err)
+			return fault.NoInput.Errorf("%w (%s)", err, p.Job.Place("input.files"))
 		}
 		for _, u := range found {
 			if seen[u.Input] {
@@ -124,7 +132,10 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 	if !filepath.IsAbs(pattern) {
 		pattern = filepath.Join(p.Job.Base, pattern)
 	}
-	if info, err := os.Stat(pattern); err == nil && !info.IsDir() {
+	if info, err := os.Stat(pattern); err == nil {
+		if info.IsDir() {
+			return nil, fmt.Errorf("%s is a directory: name the files in it, as %s", pattern, filepath.Join(pattern, "*.csv"))
+		}
 		return []Unit{{ID: filepath.Base(pattern), Input: pattern, Size: info.Size()}}, nil
 	}
 	fixed, rest := doublestar.SplitPattern(filepath.ToSlash(pattern))
@@ -237,8 +248,8 @@ func (p *Plan) checkPatterns() error {
 		}
 		for _, u := range p.Units {
 			if match, _ := doublestar.PathMatch(absolute(pattern), absolute(u.Output)); match && u.Output != Standard {
-				return fmt.Errorf("%s matches the job's own output %s: narrow the pattern, or set %s to another place",
-					p.Job.Place(fmt.Sprintf("input.files[%d]", i)), u.Output, p.Job.Place("output.directory"))
+				return fmt.Errorf("the pattern %q (%s) matches the job's own output %s: narrow it, or set %s to another place",
+					p.Job.Patterns[i], p.Job.Place("input.files"), u.Output, p.Job.Place("output.directory"))
 			}
 		}
 	}

@@ -190,7 +190,7 @@ type work struct {
 	sink    table.Sink
 	bound   *columns.Bound
 	workers int
-	tallies []columns.Tally // one a worker; merged into the first
+	tallies []*ledger.Tally // one a worker; merged into the first
 
 	rejects  *rejects
 	numeric  []numericCheck
@@ -238,7 +238,7 @@ func (w *work) into(ctx context.Context, release *publish.Release) error {
 // manifest makes the unit's manifest, once its files are durable.
 func (w *work) manifest(files publish.Record) ([]byte, error) {
 	m := &ledger.Manifest{
-		ConfigHash: w.plan.hash, Settings: w.plan.Settings, OutputVersion: job.OutputVersion, Unit: w.unit.ID, Tally: *w.tallies[0].Tally,
+		ConfigHash: w.plan.hash, Settings: w.plan.Settings, OutputVersion: job.OutputVersion, Unit: w.unit.ID, Tally: *w.tallies[0],
 	}
 	m.Set(files)
 	m.Output.Rows, m.Input.Rows = w.rows, w.rows+w.outcome.Rejects
@@ -284,14 +284,9 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	if err := w.sink.Finish(); err != nil {
 		return err
 	}
-	if s, ok := w.sink.(interface{ Warnings() []string }); ok {
-		for _, warning := range s.Warnings() {
-			w.watch.Warn(w.unit.Input + ": " + warning)
-		}
-	}
-	total := w.tallies[0].Tally
+	total := w.tallies[0]
 	for _, t := range w.tallies[1:] {
-		if err := total.Merge(t.Tally); err != nil {
+		if err := total.Merge(t); err != nil {
 			return err
 		}
 	}
@@ -368,13 +363,21 @@ func (w *work) reject(r *table.Reject) error {
 	}
 	if limit := w.plan.Job.MaxRejects; o.Rejects > limit {
 		return fault.Data.Errorf("%s:%d: %s; that makes %d rejects, and %s is %d: mend the file, or raise the limit to keep the rest and find such records in %s",
-			w.unit.Input, r.Line, r.Reason, o.Rejects, w.plan.Job.Place("limits.max_rejects"), limit, w.unit.Output+rejectsSuffix)
+			w.unit.Name(), r.Line, r.Reason, o.Rejects, w.plan.Job.Place("limits.max_rejects"), limit, w.rejectsPlace())
 	}
 	if w.rejects == nil { // standard output: they go where messages go
-		_, err := fmt.Fprintf(w.options.Stderr, "catenrich: %s:%d: %s: %q\n", w.unit.Input, r.Line, r.Reason, r.Record)
+		_, err := fmt.Fprintf(w.options.Stderr, "catenrich: %s:%d: %s: %q\n", w.unit.Name(), r.Line, r.Reason, r.Record)
 		return fault.IO.Wrap(err)
 	}
 	return w.rejects.add(w.unit.ID, r)
+}
+
+// rejectsPlace is where records that have no row can be found.
+func (w *work) rejectsPlace() string {
+	if w.rejects == nil {
+		return "standard error"
+	}
+	return w.unit.Output + rejectsSuffix
 }
 
 // rejects writes the sidecar of records that have no row, made when the first

@@ -83,8 +83,11 @@ func (p *progress) Done(o *pipeline.Outcome) {
 	for _, c := range o.Cells {
 		p.log.Warn(c.Error())
 	}
-	if o.First != nil {
-		p.log.Warn(fmt.Sprintf("%s:%d: %s; %s written to %s.rejects.csv", o.Unit.Input, o.First.Line, o.First.Reason, plural(o.Rejects, "record"), o.Unit.Output))
+	if o.Result == pipeline.Written && o.Rows == 0 && o.Rejects == 0 {
+		p.log.Warn(fmt.Sprintf("%s has no rows, only a header", o.Unit.Name()))
+	}
+	if o.First != nil && o.Unit.Output != pipeline.Standard {
+		p.log.Warn(fmt.Sprintf("%s:%d: %s; %s written to %s.rejects.csv", o.Unit.Name(), o.First.Line, o.First.Reason, plural(o.Rejects, "record"), o.Unit.Output))
 	}
 }
 

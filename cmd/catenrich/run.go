@@ -172,7 +172,7 @@ func summaryText(p *pipeline.Plan, s *pipeline.Summary) string {
 	}
 	for i, n := range s.Bits {
 		if n > 0 {
-			fmt.Fprintf(&b, "status  %d rows with bit %d: %s\n", n, 1<<i, status.Describe(i))
+			fmt.Fprintf(&b, "status  %s with bit %d: %s\n", plural(n, "row"), 1<<i, status.Describe(i))
 		}
 	}
 	fmt.Fprintf(&b, "config  %s\n", p.ConfigHash)

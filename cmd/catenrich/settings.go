@@ -36,6 +36,40 @@ var settings = []setting{
 	{"quality-good", "", "redshift.quality_good", "MARKS", "marks of usable redshifts, such as 3,4", list(func(f *job.File) *[]any { return &f.Redshift.QualityGood })},
 	{"valid", "", "redshift.valid", "LOW,HIGH", "range of redshifts to believe", numbers(func(f *job.File) *[]float64 { return &f.Redshift.Valid })},
 	{"negative", "", "redshift.negative", "WHAT", "null (default) or signed, for z < 0", text(func(f *job.File) *string { return &f.Redshift.Negative })},
+	{"redshift-error", "", "columns.redshift_error", "COLUMN", "column with the redshift's error", text(func(f *job.File) *string { return &f.Columns.RedshiftError })},
+	{"ra", "", "columns.right_ascension", "COLUMN", "right ascension, degrees or sexagesimal hours", text(func(f *job.File) *string { return &f.Columns.RightAscension })},
+	{"dec", "", "columns.declination", "COLUMN", "declination, degrees or sexagesimal", text(func(f *job.File) *string { return &f.Columns.Declination })},
+	{"frame", "", "redshift.frame", "NAME", "what the redshifts are: as-given, heliocentric, cmb or local-group", text(func(f *job.File) *string { return &f.Redshift.Frame })},
+	{"distances-in", "", "redshift.distances_in", "NAME", "frame to compute distances in: as-given, cmb or local-group", text(func(f *job.File) *string { return &f.Redshift.DistancesIn })},
+	{"peculiar-velocity", "", "columns.peculiar_velocity", "COLUMN", "peculiar velocity, km/s, positive away from us", text(func(f *job.File) *string { return &f.Columns.PeculiarVelocity })},
+	{"peculiar-velocity-sigma", "", "redshift.peculiar_velocity_sigma", "KM/S", "spread of unknown peculiar velocities, for errors", plain(func(f *job.File) *float64 { return &f.Redshift.PeculiarVelocitySigma })},
+	{"ebv", "", "columns.ebv", "COLUMN", "E(B-V), which extinction coefficients multiply", text(func(f *job.File) *string { return &f.Columns.EBV })},
+	{"band", "", "band[0].name", "NAME", "name of the band that the following flags describe (default: m)", text(func(f *job.File) *string { return &band(f).Name })},
+	{"magnitude", "", "band[0].magnitude", "COLUMN", "column with the band's magnitude", text(func(f *job.File) *string { return &band(f).Magnitude })},
+	{"magnitude-error", "", "band[0].magnitude_error", "COLUMN", "column with its error", text(func(f *job.File) *string { return &band(f).MagnitudeError })},
+	{"magnitude-missing", "", "band[0].missing", "NUMBERS", "values that mean a missing magnitude", list(func(f *job.File) *[]any { return &band(f).Missing })},
+	{"extinction", "", "band[0].extinction", "NUMBER|COLUMN", "coefficient that multiplies E(B-V), or a column in mag", func(f *job.File, value string) error {
+		band(f).Extinction = numberOrName(value)
+		return nil
+	}},
+	{"k-power-law", "", "band[0].k_correction.power_law", "ALPHA", "K-correction of a power law f_nu ~ nu^ALPHA", number(func(f *job.File) **float64 { return &kCorrection(f).PowerLaw })},
+	{"k-column", "", "band[0].k_correction.column", "COLUMN", "column with the K-correction", text(func(f *job.File) *string { return &kCorrection(f).Column })},
+	{"k-table", "", "band[0].k_correction.table", "FILE", "table of z and K", text(func(f *job.File) *string { return &kCorrection(f).Table })},
+	{"solar-magnitude", "", "band[0].solar_absolute_magnitude", "MAG", "the Sun's absolute magnitude, for luminosities", number(func(f *job.File) **float64 { return &band(f).SolarAbsoluteMagnitude })},
+	{"faint", "", "selection[0].faint", "MAG|COLUMN", "faint limit of the selection called main", func(f *job.File, value string) error {
+		selection(f).Faint = numberOrName(value)
+		return nil
+	}},
+	{"bright", "", "selection[0].bright", "MAG|COLUMN", "its bright limit", func(f *job.File, value string) error {
+		selection(f).Bright = numberOrName(value)
+		return nil
+	}},
+	{"limits-on", "", "selection[0].limits_on", "WHAT", "corrected (m - A) or observed magnitudes", text(func(f *job.File) *string { return &selection(f).LimitsOn })},
+	{"area", "", "selection[0].area", "DEG2", "area of the survey", func(f *job.File, value string) error {
+		selection(f).Area = numberOrName(value)
+		return nil
+	}},
+	{"selection-redshift", "", "selection[0].redshift", "LOW,HIGH", "redshift limits of the selection", numbers(func(f *job.File) *[]float64 { return &selection(f).Redshift })},
 	{"set", "", "cosmology[0].set", "NAME", "named set of cosmological parameters (default " + job.DefaultSet + ")", text(func(f *job.File) *string { return &model(f).Set })},
 	{"h0", "", "cosmology[0].h0", "NUMBER", "Hubble constant, km/s/Mpc", number(func(f *job.File) **float64 { return &model(f).H0 })},
 	{"omega-m", "", "cosmology[0].omega_m", "NUMBER", "matter density without neutrinos", number(func(f *job.File) **float64 { return &model(f).OmegaM })},
@@ -76,6 +110,38 @@ func model(f *job.File) *job.Cosmology {
 	return &f.Cosmology[0]
 }
 
+// band is the band that flags speak of: the first.
+func band(f *job.File) *job.Band {
+	if len(f.Band) == 0 {
+		f.Band = []job.Band{{Name: "m"}}
+	}
+	return &f.Band[0]
+}
+
+func kCorrection(f *job.File) *job.KCorrection {
+	b := band(f)
+	if b.KCorrection == nil {
+		b.KCorrection = new(job.KCorrection)
+	}
+	return b.KCorrection
+}
+
+// selection is the selection that flags speak of: the first, in their band.
+func selection(f *job.File) *job.Selection {
+	if len(f.Selection) == 0 {
+		f.Selection = []job.Selection{{Name: "main", Band: band(f).Name}}
+	}
+	return &f.Selection[0]
+}
+
+// numberOrName is a number where it reads as one, else the name of a column.
+func numberOrName(value string) any {
+	if v, err := strconv.ParseFloat(value, 64); err == nil {
+		return v
+	}
+	return value
+}
+
 func text(field func(*job.File) *string) func(*job.File, string) error {
 	return func(f *job.File, value string) error {
 		*field(f) = value
@@ -90,6 +156,17 @@ func number(field func(*job.File) **float64) func(*job.File, string) error {
 			return fmt.Errorf("is %q, want a number", value)
 		}
 		*field(f) = &v
+		return nil
+	}
+}
+
+func plain(field func(*job.File) *float64) func(*job.File, string) error {
+	return func(f *job.File, value string) error {
+		v, err := strconv.ParseFloat(value, 64)
+		if err != nil {
+			return fmt.Errorf("is %q, want a number", value)
+		}
+		*field(f) = v
 		return nil
 	}
 }
@@ -200,7 +277,7 @@ func (j *jobFlags) file(args []string) (*job.File, error) {
 	if len(args) == 1 && strings.HasSuffix(args[0], ".toml") {
 		text, err := os.ReadFile(args[0])
 		if err != nil {
-			return nil, fault.NoInput.Errorf("the job file %w", err)
+			return nil, fault.NoInput.Errorf("the job file cannot be read: %w", err)
 		}
 		if f, err = job.Parse(args[0], text); err != nil {
 			return nil, err
@@ -221,15 +298,18 @@ func (j *jobFlags) file(args []string) (*job.File, error) {
 
 // apply sets the keys that flags give.
 func (j *jobFlags) apply(f *job.File) error {
-	ownModels := len(f.Cosmology) > 0
+	own := map[string]bool{"cosmology": len(f.Cosmology) > 0, "band": len(f.Band) > 0, "selection": len(f.Selection) > 0}
 	for _, g := range j.given {
-		if ownModels && strings.HasPrefix(g.setting.path, "cosmology") {
-			return fault.Usage.Errorf("--%s cannot be combined with the [[cosmology]] of %s", g.setting.flag, f.Name)
+		if list, _, ok := strings.Cut(g.setting.path, "["); ok && own[list] {
+			return fault.Usage.Errorf("--%s cannot be combined with the [[%s]] of %s", g.setting.flag, list, f.Name)
 		}
 		f.Flagged(g.setting.path, "--"+g.setting.flag)
 		if err := g.setting.set(f, g.value); err != nil {
 			return fault.Usage.Errorf("--%s %w", g.setting.flag, err)
 		}
+	}
+	if !own["selection"] && len(f.Selection) > 0 {
+		f.Selection[0].Band = band(f).Name // --band may have come later
 	}
 	for i := range settings {
 		if f.Name == "" {

@@ -114,18 +114,27 @@ func (s *Schema) Clash(added []Field) string {
 	return ""
 }
 
-// Nearest returns up to n of names in order of their edit distance from name,
-// blind to case; names at equal distance stay in their own order.
+// Nearest returns up to n of names that may have been meant by name, blind to
+// case: those that hold it first ("zspec" for "z"), each kind in order of edit
+// distance; names at equal distance stay in their own order.
 func Nearest(name string, names []string, n int) []string {
 	type ranked struct {
 		name     string
+		holds    bool
 		distance int
 	}
+	asked := strings.ToLower(name)
 	all := make([]ranked, len(names))
 	for i, s := range names {
-		all[i] = ranked{s, editDistance(strings.ToLower(name), strings.ToLower(s))}
+		lower := strings.ToLower(s)
+		all[i] = ranked{s, asked != "" && strings.Contains(lower, asked), editDistance(asked, lower)}
 	}
-	sort.SliceStable(all, func(i, j int) bool { return all[i].distance < all[j].distance })
+	sort.SliceStable(all, func(i, j int) bool {
+		if all[i].holds != all[j].holds {
+			return all[i].holds
+		}
+		return all[i].distance < all[j].distance
+	})
 	near := make([]string, 0, n)
 	for i := 0; i < len(all) && i < n; i++ {
 		near = append(near, all[i].name)

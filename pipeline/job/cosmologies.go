@@ -26,10 +26,10 @@ func (r *resolver) cosmologies(s *Settings) {
 	for i := range list {
 		path := fmt.Sprintf("cosmology[%d]", i)
 		c := &list[i]
-		if i > 0 && c.Suffix == "" {
+		switch {
+		case i > 0 && c.Suffix == "":
 			r.fail(path+".suffix", "is not set: only the first cosmology goes without a suffix for its columns")
-		}
-		if suffixes[c.Suffix] {
+		case suffixes[c.Suffix]:
 			r.fail(path+".suffix", "%q is used twice", c.Suffix)
 		}
 		suffixes[c.Suffix] = true
