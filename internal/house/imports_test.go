@@ -26,7 +26,7 @@ var allowed = map[string][]string{
 	"readers":            {"internal/"},
 	"readers/readertest": {"internal/"},
 	"writers":            {"internal/", "readers"},
-	"writers/writertest": {"internal/", "readers"},
+	"writers/writertest": {"internal/", "readers", "readers/readertest"},
 
 	"pipeline/job":     {"cosmo", "cosmo/", "internal/"},
 	"pipeline/columns": {"cosmo", "cosmo/", "internal/", "pipeline/job"},
