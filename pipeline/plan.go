@@ -79,6 +79,7 @@ func NewPlan(j *job.Job, formats Formats) (*Plan, error) {
 		return nil, fault.Config.Wrap(err)
 	}
 	p.Kernel = columns.New(j)
+	p.Warnings = p.Kernel.Warnings()
 	p.warn()
 	return p, nil
 }

@@ -52,6 +52,7 @@ type planView struct {
 	Units      []unitView      `json:"units"`
 	Added      []addedView     `json:"columns"`
 	Models     []modelView     `json:"models"`
+	Terms      []string        `json:"terms"`
 	Warnings   []string        `json:"warnings"`
 	Settings   json.RawMessage `json:"settings"`
 }
@@ -84,7 +85,7 @@ type modelView struct {
 }
 
 func planJSON(p *pipeline.Plan) planView {
-	v := planView{Title: p.Job.Title, ConfigHash: p.ConfigHash, Warnings: append([]string{}, p.Warnings...), Settings: p.Settings}
+	v := planView{Title: p.Job.Title, ConfigHash: p.ConfigHash, Terms: p.Kernel.Sources(), Warnings: append([]string{}, p.Warnings...), Settings: p.Settings}
 	for _, u := range p.Units {
 		v.Units = append(v.Units, unitView{u.ID, u.Input, u.Output, u.Size})
 	}
@@ -125,6 +126,10 @@ func planText(w io.Writer, p *pipeline.Plan) error {
 	fmt.Fprintf(t, "\nreads\n")
 	for _, n := range p.Kernel.Needs() {
 		fmt.Fprintf(t, "  %s\t%s\n", n.Column, n.Role)
+	}
+	fmt.Fprintf(t, "\nterms\n")
+	for _, line := range p.Kernel.Sources() {
+		fmt.Fprintf(t, "  %s\n", line)
 	}
 	fmt.Fprintf(t, "\nadds\n")
 	for _, f := range p.Kernel.Added() {
