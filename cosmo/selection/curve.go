@@ -12,8 +12,8 @@ import (
 const fluxPerMag = 5 / math.Ln10
 
 // least is the redshift below which a bright limit is none: an object there
-// would be 50 mag brighter than at z = 0.01.
-const least = 1e-12
+// would be 30 mag brighter than at z = 0.01.
+const least = 1e-8
 
 // A curve is w(z) for objects at rest, q = 1, cut into rising and falling
 // pieces.

@@ -14,9 +14,9 @@
 //
 //	w(z) = mu(z) + K(z_obs) + e(z)
 //
-// and a limit on the magnitude is a limit on w (curve.go). Roots are found on
-// the model's own cells, from a table of the inverse of w that is only a first
-// guess (inverse.go).
+// and a limit on the magnitude is a limit on w (curve.go). Roots are read off
+// a table of the inverse of w, made from the model's own cells and proved against
+// them, cell by cell, when it is made (inverse.go).
 package selection
 
 import (

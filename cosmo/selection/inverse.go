@@ -6,13 +6,19 @@ import "math"
 // z where w is smooth.
 const cellsPerMag = 64
 
+// sure is how well a cell must return its w to be used without another look.
+const sure = 1e-10 // mag
+
 // An inverse is z as a function of w over a piece, cubics between equally
-// spaced w. It is a first guess and a slope; Newton's rule with w itself does
-// the rest.
+// spaced w. A cell that does not return w to within sure, because K has a kink
+// there or w turns, is all NaN.
 type inverse struct {
 	from, scale float64 // w of the first cell, cells a magnitude
-	cubics      [][4]float64
+	cells       []cell
 }
+
+// A cell is a cubic in 0 ≤ u ≤ 1.
+type cell [4]float64
 
 // tabulate fills the inverse of w over p.
 func (v *inverse) tabulate(c *curve, p *piece) {
@@ -22,7 +28,7 @@ func (v *inverse) tabulate(c *curve, p *piece) {
 		return // flat or infinite: roots are bracketed from the start
 	}
 	v.from, v.scale = lo, float64(n)/(hi-lo)
-	v.cubics = make([][4]float64, n)
+	v.cells = make([]cell, n)
 	z := make([]float64, n+1)
 	z[0], z[n] = p.zlo, p.zhi
 	if p.wlo > p.whi {
@@ -33,10 +39,18 @@ func (v *inverse) tabulate(c *curve, p *piece) {
 		f := func(x float64) float64 { return c.at(x, 1) - w }
 		z[i] = bracketed(f, z[i-1], v.beyond(f, z[i-1], z[n]))
 	}
-	for i := range v.cubics {
+	for i := range v.cells {
 		d := z[i+1] - z[i]
 		a, b := v.step(c, z[i], d), v.step(c, z[i+1], d)
-		v.cubics[i] = [4]float64{z[i], a, float64(3*d) - float64(2*a) - b, a + b - float64(2*d)}
+		k := cell{z[i], a, float64(3*d) - float64(2*a) - b, a + b - float64(2*d)}
+		for _, u := range [3]float64{0.25, 0.5, 0.75} {
+			at, _ := k.at(u)
+			w := lo + (float64(i)+u)/v.scale
+			if !(at > p.zlo && at < p.zhi && math.Abs(c.at(at, 1)-w) <= sure) {
+				k = cell{math.NaN(), math.NaN(), math.NaN(), math.NaN()}
+			}
+		}
+		v.cells[i] = k
 	}
 }
 
@@ -64,20 +78,24 @@ func (v *inverse) step(c *curve, z, d float64) float64 {
 	return s
 }
 
-// guess returns z(w) and dz/dw; ok is false outside the table.
-func (v *inverse) guess(w float64) (z, slope float64, ok bool) {
+// at returns the cubic and its slope at 0 ≤ u ≤ 1.
+func (k *cell) at(u float64) (z, slope float64) {
+	z = float64(k[3]*u) + k[2]
+	slope = float64(2*z) + float64(k[3]*u) // 3 k3 u + 2 k2
+	z = float64(z*u) + k[1]
+	slope = float64(slope*u) + k[1]
+	return float64(z*u) + k[0], slope
+}
+
+// at returns z(w) and dz/dw, NaN where the table does not know.
+func (v *inverse) at(w float64) (z, slope float64) {
 	t := float64((w - v.from) * v.scale)
-	if !(t >= 0 && t <= float64(len(v.cubics))) || len(v.cubics) == 0 {
-		return 0, 0, false
+	if !(t >= 0 && t < float64(len(v.cells))) {
+		return math.NaN(), math.NaN()
 	}
-	i := min(int(t), len(v.cubics)-1)
-	u := t - float64(i)
-	c := &v.cubics[i]
-	z = float64(c[3]*u) + c[2]
-	slope = float64(2*z) + float64(c[3]*u) // 3 c3 u + 2 c2
-	z = float64(z*u) + c[1]
-	slope = float64(slope*u) + c[1]
-	return float64(z*u) + c[0], slope * v.scale, true
+	i := int(t)
+	z, slope = v.cells[i].at(t - float64(i))
+	return z, float64(slope * v.scale)
 }
 
 // bracketed finds the root of f between a and b, where it has opposite signs,

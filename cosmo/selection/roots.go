@@ -217,31 +217,37 @@ func (o *object) crossed(v *way) (limit float64, ok bool) {
 	return limit, v.w < limit
 }
 
-// newtonDone is a relative step after which the next would be below rounding:
-// the slope comes from the table and is good to 1e-6, at a kink of K to
-// some per cent.
-const newtonDone = 1e-10
+// rounding is how far off, relatively, a z of the inverse may be.
+const rounding = 1e-10
 
 // root finds where w is equal to limit, between from and end.
 func (o *object) root(p *piece, limit, from, end float64) float64 {
-	c := o.c
-	z, slope, ok := p.inverse.guess(limit)
-	if ok && o.q != 1 {
-		// K is read at q(1+z)-1: first order in q-1.
-		if k := c.k.Slope(z); k == k {
-			z, slope, ok = p.inverse.guess(limit - float64(k*(o.q-1)*(1+z)))
-		}
-	}
 	lo, hi := min(from, end), max(from, end)
-	for range 6 {
-		if !ok || !(z >= lo && z <= hi) {
+	z := o.tabulated(&p.inverse, limit)
+	if z >= lo-float64(rounding*lo) && z <= hi+float64(rounding*hi) {
+		return min(max(z, lo), hi)
+	}
+	return bracketed(func(x float64) float64 { return o.c.at(x, o.q) - limit }, from, end)
+}
+
+// tabulated reads the root off the inverse, NaN where it cannot. Where K
+// depends on q, the difference that q makes to K is read at the root so far and
+// the root again without it. That difference is nearly proportional to 1+z,
+// which is put into the step, so that the second round is mostly the last.
+func (o *object) tabulated(v *inverse, limit float64) float64 {
+	z, slope := v.at(limit)
+	if o.q == 1 {
+		return z
+	}
+	k, d := o.c.k, 0.0 // d: the difference so far
+	for range 8 {
+		before := z
+		now := k.Value(float64(o.q*(1+z))-1) - k.Value(z)
+		growth := float64(now*slope) / (1 + z) // of the difference, by w
+		d = (now + float64(growth*d)) / (1 + growth)
+		if z, slope = v.at(limit - d); !(math.Abs(z-before) > rounding*z) {
 			break
 		}
-		d := float64((c.at(z, o.q) - limit) * slope)
-		z -= d
-		if math.Abs(d) <= newtonDone*z {
-			return min(max(z, lo), hi)
-		}
 	}
-	return bracketed(func(x float64) float64 { return c.at(x, o.q) - limit }, from, end)
+	return z
 }

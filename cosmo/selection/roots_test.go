@@ -135,12 +135,13 @@ func TestOwnMagnitudeIsOwnRoot(t *testing.T) {
 				zmin, zmax, st := []float64{0}, []float64{0}, []int32{0}
 				New(m, photo.Single(k), photo.Evolution{}, Limits{Bright: 18.3, Faint: 18.3, Zmax: 5}).Roots(zmin, zmax, r, st)
 				for _, root := range []float64{zmin[0], zmax[0]} {
-					if d := math.Abs(root-z) / z; !(d < 1e-12) {
+					// The inverse is proved to 1e-10 mag when it is made: 5e-11 of z.
+					if d := math.Abs(root-z) / z; !(d < 5e-11) {
 						t.Errorf("%s, q %v: root %.17g of an object at the limit at z = %v (%.2g off)", kname, q, root, z, d)
 					}
 				}
 				own := 18.3 - offset + w(m, k, photo.Evolution{}, zmax[0], q, 1.0005)
-				if math.Abs(own-18.3) > 1e-9 {
+				if math.Abs(own-18.3) > 2e-10 {
 					t.Errorf("%s, q %v, z %v: m at the root %.12f, want its own 18.3", kname, q, z, own)
 				}
 			}
@@ -207,10 +208,11 @@ func BenchmarkRoots(b *testing.B) {
 				}
 				zmin, zmax, st := make([]float64, n), make([]float64, n), make([]int32, n)
 				b.ReportAllocs()
+				report := cpu(b, n)
 				for b.Loop() {
 					s.Roots(zmin, zmax, r, st)
 				}
-				b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N)/n, "ns/row")
+				report()
 			})
 		}
 	}
