@@ -60,7 +60,7 @@ func (m *Model) layOctave(i int) {
 		t.cells, t.nodes = t.cells[:cells], t.nodes[:nodes]
 		good := true
 		for c := 0; c < count && good; c++ {
-			s := span{low - 1 + float64(c)*width, width} // exact
+			s := span{low - 1 + float64(float64(c)*width), width} // exact
 			if low < 1 {
 				s = span{s.edge + width, -width}
 			}

@@ -111,9 +111,9 @@ var chebyshev = func() (c struct {
 	c.monomial[1][0], c.monomial[1][1] = -1, 2
 	for k := 2; k < order; k++ { // T_k+1 = 2(2s-1) T_k - T_k-1
 		for i := range order {
-			v := -2*c.monomial[k-1][i] - c.monomial[k-2][i]
+			v := float64(-2*c.monomial[k-1][i]) - c.monomial[k-2][i]
 			if i > 0 {
-				v += 4 * c.monomial[k-1][i-1]
+				v += float64(4 * c.monomial[k-1][i-1])
 			}
 			c.monomial[k][i] = v // small integers: exact
 		}
@@ -197,7 +197,7 @@ func (f *fit) whole(width float64) float64 {
 
 // at evaluates the fit, last term and all, at fraction s of the width.
 func (f *fit) at(s float64) float64 {
-	x := 2*s - 1
+	x := float64(2*s) - 1
 	var b1, b2 float64 // Clenshaw 1955
 	for k := order - 1; k > 0; k-- {
 		b1, b2 = float64(2*x*b1)-b2+f[k], b1

@@ -13,7 +13,7 @@ const (
 	firstLost     = -22 // the cells begin at z = 2^-22
 	lostOctaves   = lastOctave - firstLost + 1
 	leastLostBits = 4
-	mostLostBits  = 8
+	mostLostBits  = 6
 	lostSmooth    = 1e-13 // relative error of a cell's fit
 )
 
@@ -96,19 +96,20 @@ func (m *Model) fillContactLost(b *Base) {
 // A lostWalk finds contact-lost ages for rising z. Where x = 1+z_x lies within
 // the cells of D_C they give it; below, it walks from the last x to the next.
 type lostWalk struct {
-	m       *Model
-	grid    *horizonGrid
-	now     float64 // the age today
-	reach   float64 // G at the lowest x that the cells serve
-	lowest  float64 // and z_x there
-	guess   float64 // the last z_x found in the cells
-	started bool
-	x, g    float64 // where the walk stands: G(x) = g
-	time    float64 // from today until then
+	m      *Model
+	grid   *horizonGrid
+	now    float64 // the age today
+	reach  float64 // G at the lowest x that the cells serve
+	lowest float64 // and z_x there
+	guess  float64 // the last z_x found in the cells
+	x, g   float64 // where the walk stands: G(x) = g
+	time   float64 // from today until then
+	anchor float64 // time when it was last found without walking; 0 before the first
+	gentle bool    // x is no steep power of g: walking is right
 }
 
 func (m *Model) newLostWalk() *lostWalk {
-	w := &lostWalk{m: m, grid: m.future.grid(), now: m.past.scalars().age, lowest: -0.985}
+	w := &lostWalk{m: m, grid: m.future.grid(), now: m.past.scalars().age, lowest: -0.985, gentle: m.e.wa3 != 0 || m.e.power <= 1}
 	for i := -firstOctave - 1; i >= 0; i-- {
 		if m.past.octaves[i].slow {
 			near, _ := octaveEnds(i)
@@ -127,11 +128,12 @@ func (w *lostWalk) age(z float64) float64 {
 		w.guess = w.m.invertDistance(g-w.grid.total, w.lowest, z, w.guess)
 		return w.m.value(Age, w.guess)
 	}
-	if !w.started {
-		u, time := w.grid.solve(w.m, g)
-		w.started, w.x, w.g, w.time = true, exact.Exp(u), g, time
-	} else {
+	if w.gentle && w.anchor != 0 {
 		w.step(g)
+	}
+	if !w.gentle || !(w.time > 0.25*w.anchor) { // rounding errors of the steps would show
+		u, time := w.grid.solve(w.m, g)
+		w.x, w.g, w.time, w.anchor = exact.Exp(u), g, time, time
 	}
 	return w.now + w.time
 }
@@ -146,7 +148,7 @@ func (w *lostWalk) step(g float64) {
 	k3 := rate(x + float64(0.5*h*k2))
 	k4 := rate(x + float64(h*k3))
 	next := x + float64(h*(k1+2*(k2+k3)+k4)/6)
-	middle, half := 0.5*(x+next), 0.5*(next-x)
+	middle, half := float64(0.5*(x+next)), float64(0.5*(next-x))
 	var distance, time float64
 	for i, s := range short.node {
 		at := middle + float64(half*s)

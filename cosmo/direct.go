@@ -37,11 +37,20 @@ type direct struct{ m *Model }
 
 // legendre integrates f from a to b by one panel.
 func legendre(f func(float64) float64, a, b float64) float64 {
-	if a > b {
-		return -legendre(f, b, a)
+	middle, half := (a+b)/2, (b-a)/2
+	sum := 0.0
+	for i, x := range legendreRule.node {
+		sum += legendreRule.weight[i] * f(middle+half*x)
 	}
-	return quad.Fixed(f, a, b, 24, quad.Legendre{}, 0)
+	return sum * half
 }
+
+// legendreRule is gonum's rule of 24 nodes.
+var legendreRule = func() gauss {
+	g := gauss{make([]float64, 24), make([]float64, 24)}
+	quad.Legendre{}.FixedLocations(g.node, g.weight, -1, 1)
+	return g
+}()
 
 // energyNodes is a rule for the Fermi-Dirac energy integral: Gauss-Legendre in
 // the momentum over panels that double from 2^-16 to 64.
@@ -140,10 +149,10 @@ func (d direct) towardTurn(z float64, f func(x float64) float64) float64 {
 // converge doubles n from its start until the sum stands still.
 func converge(n int, sum func(n int) float64) float64 {
 	last := sum(n)
-	for range 10 {
+	for range 7 {
 		n *= 2
 		next := sum(n)
-		if math.Abs(next-last) <= 1e-14*math.Abs(next) {
+		if math.Abs(next-last) <= 2e-14*math.Abs(next) {
 			return next
 		}
 		last = next
@@ -218,6 +227,9 @@ func (d direct) geometry(dc float64, past bool) (dm, slope, volume float64) {
 	})
 }
 
+// tiniest is the 1+z below which E^2 might underflow.
+const tiniest = 0x1p-250
+
 // shrunk returns places 1+z = x that halve downward from high, and for each
 // int_0^x dx'/E: the event horizon's comoving radius then, over D_H.
 func (d direct) shrunk(high, least float64) (x, radius []float64) {
@@ -231,7 +243,7 @@ func (d direct) shrunk(high, least float64) (x, radius []float64) {
 			// dark energy alone: each further half adds a fixed share of the last
 			rest = part / (math.Exp2(1-1.5*(1+d.m.params.W0)) - 1)
 		}
-		if high < 0x1p-30 && rest < least/4 || part == 0 {
+		if high < 0x1p-30 && rest < 1e-16*least || part == 0 || high < tiniest {
 			break
 		}
 	}
@@ -267,8 +279,8 @@ func (d direct) contactLost(z, dc float64) float64 {
 	for j+1 < len(x) && radius[j+1] > dc {
 		j++
 	}
-	if j+1 == len(x) {
-		return math.NaN()
+	if j+1 == len(x) || x[j+1] < tiniest {
+		return math.NaN() // dark energy so soft that the age is astronomical
 	}
 	low, high := math.Log(x[j+1]), math.Log(x[j])
 	u := high

@@ -67,13 +67,13 @@ func (e *expansion) volumeRatio(i float64) float64 {
 		for k := 13.0; k > 1; k-- {
 			s = 1 + float64(4*q*s)/(2*k*(2*k+1))
 		}
-		return 4 * math.Pi / 3 * s
+		return float64(4 * math.Pi / 3 * s)
 	case q > 0:
 		r := math.Sqrt(q)
-		return math.Pi * (exact.Sinh(2*r) - 2*r) / (q * r)
+		return math.Pi * (exact.Sinh(2*r) - float64(2*r)) / (q * r)
 	default:
 		r := math.Sqrt(-q)
-		return math.Pi * (2*r - exact.Sin(2*r)) / (-q * r)
+		return math.Pi * (float64(2*r) - exact.Sin(2*r)) / (-q * r)
 	}
 }
 

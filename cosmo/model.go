@@ -1,7 +1,6 @@
 package cosmo
 
 import (
-	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -111,10 +110,10 @@ func (m *Model) fillNeutrinos() {
 func (m *Model) noBigBang(u float64) error {
 	param, value := "omega_de", m.e.dark
 	switch {
+	case m.params.Wa != 0 && m.e.power > 3 && m.e.dark < 0:
+		param, value = "wa", m.params.Wa // negative dark energy that outgrows matter
 	case m.params.Flat:
 		param, value = "omega_m", m.params.OmegaM
-	case m.params.Wa != 0 && m.e.power > 3:
-		param, value = "wa", m.params.Wa
 	}
 	return &ParamError{param, value, fmt.Sprintf("no big bang: with the other densities, H^2 falls to zero or below at z = %.6g", exact.Expm1(u))}
 }
@@ -146,6 +145,9 @@ func (m *Model) polishTurn(x float64) float64 {
 		} else {
 			low = middle
 		}
+	}
+	if math.Abs(m.e.squared(low)) < m.e.squared(high) {
+		return low
 	}
 	return high
 }
@@ -190,9 +192,3 @@ func (m *Model) OmegaNu() float64 { return m.neutrinos }
 // and turn around; false if it never does. Rows at or beyond it have no
 // quantities, and such a model has no event horizon.
 func (m *Model) TurnAround() (z float64, ok bool) { return m.turnAround, m.turns }
-
-// IsParamError reports whether err holds a *[ParamError].
-func IsParamError(err error) bool {
-	var p *ParamError
-	return errors.As(err, &p)
-}

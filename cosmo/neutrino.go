@@ -45,7 +45,7 @@ type species struct {
 // density returns the species' density at 1+z = x over today's critical one:
 // omega x^4 g(y/x), written so that neither limit loses digits.
 func (s *species) density(x float64) float64 {
-	sum, x2, y2 := 0.0, x*x, s.y*s.y
+	sum, x2, y2 := 0.0, float64(x*x), float64(s.y*s.y)
 	for _, n := range fermiDirac() {
 		sum += float64(n.weight * math.Sqrt(float64(n.p2*x2)+y2))
 	}
@@ -55,7 +55,7 @@ func (s *species) density(x float64) float64 {
 // rise returns density(a+d) - density(a) without cancellation.
 func (s *species) rise(a, d float64) float64 {
 	b := a + d
-	a2, b2, y2 := a*a, b*b, s.y*s.y
+	a2, b2, y2 := float64(a*a), float64(b*b), float64(s.y*s.y)
 	squares := float64(d * (a + b))                // b^2 - a^2
 	cubes := float64(d * (b2 + float64(a*b) + a2)) // b^3 - a^3
 	var first, second float64
@@ -64,20 +64,20 @@ func (s *species) rise(a, d float64) float64 {
 		first += float64(n.weight * rb)
 		second += float64(n.weight * n.p2 / (ra + rb))
 	}
-	return s.omega * (float64(cubes*first) + float64(a2*a*squares*second))
+	return float64(s.omega * (float64(cubes*first) + float64(a2*a*squares*second)))
 }
 
 // stretched returns density(e^u)/e^(pu), for any u: p = 4 where u > 0, else 3.
 func (s *species) stretched(u float64) (p, value float64) {
-	sum, y2 := 0.0, s.y*s.y
+	sum, y2 := 0.0, float64(s.y*s.y)
 	p2, q2 := 1.0, y2 // at u > 0: sqrt(p^2 + (y/x)^2), below: sqrt(p^2 x^2 + y^2)
 	if u > 0 {
-		p, q2 = 4, y2*exact.Exp(-2*u)
+		p, q2 = 4, float64(y2*exact.Exp(-2*u))
 	} else {
 		p, p2 = 3, exact.Exp(2*u)
 	}
 	for _, n := range fermiDirac() {
 		sum += float64(n.weight * math.Sqrt(float64(n.p2*p2)+q2))
 	}
-	return p, s.omega * sum
+	return p, float64(s.omega * sum)
 }

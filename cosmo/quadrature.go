@@ -38,7 +38,7 @@ var (
 
 // apply returns the integral of f from a to b by one panel of the rule.
 func (g *gauss) apply(f func(float64) float64, a, b float64) float64 {
-	middle, half := 0.5*(a+b), 0.5*(b-a)
+	middle, half := float64(0.5*(a+b)), float64(0.5*(b-a))
 	sum := 0.0
 	for i, x := range g.node {
 		sum += float64(g.weight[i] * f(middle+float64(half*x)))
@@ -55,7 +55,7 @@ func integrate(f func(float64) float64, a, b float64) float64 {
 }
 
 func refine(f func(float64) float64, a, b, whole, size float64, depth int) float64 {
-	middle := 0.5 * (a + b)
+	middle := float64(0.5 * (a + b))
 	left, right := coarse.apply(f, a, middle), coarse.apply(f, middle, b)
 	sum := left + right
 	size = max(size, math.Abs(sum))

@@ -12,18 +12,26 @@ import (
 
 // slowDistance returns the integral of dz/E from z0 to z1.
 func (m *Model) slowDistance(z0, z1 float64) float64 {
-	if m.turns && (z0 < 0 || z1 < 0) {
-		return m.fromTurn(z0, z1, func(x float64) float64 { return 1 })
-	}
-	return integrate(m.e.distanceIntegrand, exact.Log1p(z0), exact.Log1p(z1))
+	return m.slowIntegral(z0, z1, m.e.distanceIntegrand, func(x float64) float64 { return 1 })
 }
 
 // slowTime returns the integral of dz/((1+z)E) from z0 to z1.
 func (m *Model) slowTime(z0, z1 float64) float64 {
-	if m.turns && (z0 < 0 || z1 < 0) {
-		return m.fromTurn(z0, z1, func(x float64) float64 { return 1 / x })
+	return m.slowIntegral(z0, z1, m.e.timeIntegrand, func(x float64) float64 { return 1 / x })
+}
+
+// slowIntegral integrates over u = ln(1+z), but for what lies beyond half the
+// way to a turn-around.
+func (m *Model) slowIntegral(z0, z1 float64, integrand, weight func(float64) float64) float64 {
+	if !m.turns || z1 >= 0.5*m.turnAround {
+		return integrate(integrand, exact.Log1p(z0), exact.Log1p(z1))
 	}
-	return integrate(m.e.timeIntegrand, exact.Log1p(z0), exact.Log1p(z1))
+	half := min(z0, 0.5*m.turnAround)
+	near := 0.0
+	if half < z0 {
+		near = integrate(integrand, exact.Log1p(z0), exact.Log1p(half))
+	}
+	return near + m.fromTurn(half, z1, weight)
 }
 
 // fromTurn integrates weight(x)/E where E falls to zero as sqrt(x - x0): over s
@@ -44,9 +52,12 @@ func (m *Model) slowRate(z float64) float64 {
 	return math.Sqrt(m.e.squared(1 + z))
 }
 
-// slowDrift returns (1+z) - E = ((1+z)^2 - E^2)/((1+z) + E) without
-// cancellation.
+// slowDrift returns (1+z) - E; near z = 0 as ((1+z)^2 - E^2)/((1+z) + E), which
+// does not cancel there.
 func (m *Model) slowDrift(z float64) float64 {
+	if math.Abs(z) > 0.5 {
+		return (1 + z) - m.slowRate(z)
+	}
 	return (float64(z*(2+z)) - m.e.rise(1, z)) / ((1 + z) + m.slowRate(z))
 }
 

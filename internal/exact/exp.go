@@ -73,7 +73,7 @@ func Expm1(x float64) float64 {
 		return scale(hi+lo, k)
 	}
 	s := pow2(k)
-	sum, e := twoSum(hi*s, -1)
+	sum, e := twoSum(float64(hi*s), -1)
 	return sum + (e + float64(lo*s))
 }
 

@@ -40,6 +40,6 @@ func halfSum(a, sign float64) float64 {
 	}
 	g, m, j := expParts(-a, 0)
 	up, down := pow2(k-1), sign*pow2(j-1)
-	s, e := twoSum(h*up, g*down)
+	s, e := twoSum(float64(h*up), float64(g*down))
 	return s + (e + (float64(l*up) + float64(m*down)))
 }

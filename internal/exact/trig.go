@@ -95,7 +95,7 @@ func atanRatio(a, b float64) (hi, lo float64) {
 	case b < 0x1p-800:
 		a, b = a*0x1p200, b*0x1p200
 	}
-	i := int(32*(a/b) + 0.5)
+	i := int(float64(32*(a/b)) + 0.5)
 	c := float64(i) / 32
 	p, e := twoProduct(c, b)
 	q := ((a - p) - e) / (b + float64(c*a))
