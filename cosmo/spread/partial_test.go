@@ -44,7 +44,7 @@ func columns(m *cosmo.Model, k photo.Correction, e photo.Evolution) map[string]f
 		"evolution": func(r row) float64 { return e.At(r.z) },
 		"absolute":  func(r row) float64 { return 19 - mu(r) - k.Value(zobs(r)) - e.At(r.z) },
 		"line":      func(r row) float64 { return dl(r) * dl(r) },
-		"radio":     func(r row) float64 { return dl(r) * dl(r) * math.Pow(1+zobs(r), -(1 - 0.7)) },
+		"radio":     func(r row) float64 { return dl(r) * dl(r) * math.Pow(1+zobs(r), -(1-0.7)) },
 		"size":      func(r row) float64 { return 3 * da(r) },
 	}
 }
