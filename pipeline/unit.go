@@ -190,7 +190,7 @@ type work struct {
 	sink    table.Sink
 	bound   *columns.Bound
 	workers int
-	tallies []*ledger.Tally // one a worker; merged into the first
+	tallies []columns.Tally // one a worker; merged into the first
 
 	rejects  *rejects
 	numeric  []numericCheck
@@ -238,7 +238,7 @@ func (w *work) into(ctx context.Context, release *publish.Release) error {
 // manifest makes the unit's manifest, once its files are durable.
 func (w *work) manifest(files publish.Record) ([]byte, error) {
 	m := &ledger.Manifest{
-		ConfigHash: w.plan.hash, Settings: w.plan.Settings, OutputVersion: job.OutputVersion, Unit: w.unit.ID, Tally: *w.tallies[0],
+		ConfigHash: w.plan.hash, Settings: w.plan.Settings, OutputVersion: job.OutputVersion, Unit: w.unit.ID, Tally: *w.tallies[0].Tally,
 	}
 	m.Set(files)
 	m.Output.Rows, m.Input.Rows = w.rows, w.rows+w.outcome.Rejects
@@ -284,9 +284,14 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	if err := w.sink.Finish(); err != nil {
 		return err
 	}
-	total := w.tallies[0]
+	if s, ok := w.sink.(interface{ Warnings() []string }); ok {
+		for _, warning := range s.Warnings() {
+			w.watch.Warn(w.unit.Name() + ": " + warning)
+		}
+	}
+	total := w.tallies[0].Tally
 	for _, t := range w.tallies[1:] {
-		if err := total.Merge(t); err != nil {
+		if err := total.Merge(t.Tally); err != nil {
 			return err
 		}
 	}
