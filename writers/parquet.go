@@ -18,9 +18,9 @@ const storeRoom = 64 << 20
 
 // A Parquet is a [table.Sink] that grafts new columns onto a Parquet file: the
 // output is the whole input, byte for byte, then for each row group the chunks
-// of the new columns, then their page indexes, then a footer that is the old
-// one with the new columns spliced in. Nothing old is decoded or moved, so
-// every offset, index and bloom filter of the input stays right.
+// of the new columns, then the page indexes, copies of the old ones among them,
+// then a footer that is the old one with the new columns spliced in. Nothing
+// old is decoded, and every offset of a page or bloom filter stays right.
 //
 // Begin reading here; parquet_page.go makes pages, parquet_store.go keeps them
 // until their row group is complete, parquet_chunk.go sums them up, and
@@ -227,6 +227,11 @@ func (w *Parquet) skipEmpty(group int) error {
 // spools what the footer and the page indexes will say of them.
 func (w *Parquet) finishGroup() error {
 	var e parquetfoot.Encoder
+	if w.foot.Indexed {
+		if err := w.copyIndexes(); err != nil {
+			return err
+		}
+	}
 	for i := range w.columns {
 		k := columnChunk{column: &w.columns[i], codec: w.codec, ordered: w.foot.Ordered, offset: w.out.Offset()}
 		for s := range w.store.slices {
@@ -245,13 +250,41 @@ func (w *Parquet) finishGroup() error {
 	return nil
 }
 
+// copyIndexes spools the old chunks' page indexes, to stand before the new
+// ones of the same row group: parquet-go takes all column indexes of a file for
+// one run of bytes that begins with the first chunk's, and all offset indexes
+// for another.
+func (w *Parquet) copyIndexes() error {
+	chunks, err := w.foot.Chunks(w.group, nil)
+	if err != nil {
+		return err
+	}
+	file, _ := w.src.File()
+	var buf []byte
+	for i := range chunks {
+		for _, x := range []struct {
+			at parquetfoot.Place
+			to *spool
+		}{{chunks[i].ColumnIndex, &w.columnIndexes}, {chunks[i].OffsetIndex, &w.offsetIndexes}} {
+			buf = grow(buf[:0], int(x.at.Length))
+			if _, err := file.ReadAt(buf, x.at.Offset); err != nil {
+				return fault.IO.Errorf("reading %s: %w", file.Name(), err)
+			}
+			if err := x.to.add(buf); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
 // record spools one chunk's metadata and, if the old chunks have page indexes,
 // its own.
 func (w *Parquet) record(e *parquetfoot.Encoder, k *columnChunk) error {
 	total := k.total()
 	r := chunkRecord{unpacked: int64(total.unpacked), stored: int64(total.stored)}
-	if w.foot.Indexed && len(k.pages) > 0 {
-		if k.ordered {
+	if w.foot.Indexed {
+		if k.ordered && len(k.pages) > 0 {
 			e.B = e.B[:0]
 			k.columnIndex(e)
 			r.columnIndex = int64(len(e.B))
@@ -307,18 +340,30 @@ func (w *Parquet) writeFooter(at indexPlace) (int64, error) {
 	encoders := make([]parquetfoot.Encoder, len(w.columns))
 	chunks := make([][]byte, len(w.columns))
 	var r chunkRecord
-	x.Group = func(int) (_ [][]byte, unpacked, stored int64, err error) {
+	var old []parquetfoot.Chunk
+	x.Group = func(g int) (more parquetfoot.GroupExtension, err error) {
+		if w.foot.Indexed {
+			if old, err = w.foot.Chunks(g, old); err != nil {
+				return more, err
+			}
+			for i := range old {
+				more.Moved = append(more.Moved, parquetfoot.MovedIndexes{OffsetIndex: at.offset, ColumnIndex: at.column})
+				at.offset += old[i].OffsetIndex.Length
+				at.column += old[i].ColumnIndex.Length
+			}
+		}
 		for i := range w.columns {
 			if err := r.read(in); err != nil {
-				return nil, 0, 0, err
+				return more, err
 			}
 			encoders[i].B = encoders[i].B[:0]
 			r.encode(&encoders[i], &at)
 			chunks[i] = encoders[i].B
-			unpacked += r.unpacked
-			stored += r.stored
+			more.Uncompressed += r.unpacked
+			more.Compressed += r.stored
 		}
-		return chunks, unpacked, stored, nil
+		more.Chunks = chunks
+		return more, nil
 	}
 	return w.foot.Extend(w.out, &x)
 }

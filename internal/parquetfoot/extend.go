@@ -18,15 +18,29 @@ type Extension struct {
 	Columns []Column
 	Entries []Entry // all of them, the old ones included
 
-	// Group returns the encoded ColumnChunk of each new column in row group
-	// g, and the bytes of their pages, unpacked and as stored. It is called
-	// once for each row group, in order, and its result used before the next.
-	Group func(g int) (chunks [][]byte, uncompressed, compressed int64, err error)
+	// Group returns what row group g gets. It is called once for each row
+	// group, in order, and its result used before the next call.
+	Group func(g int) (GroupExtension, error)
 }
+
+// A GroupExtension is what is added to one row group.
+type GroupExtension struct {
+	Chunks                   [][]byte // the encoded ColumnChunk of each new column
+	Uncompressed, Compressed int64    // bytes of their pages
+
+	// Moved says where copies of the old chunks' page indexes stand, or is
+	// nil. Some readers take all indexes of one kind for one run of bytes, so
+	// old and new ones must stand together.
+	Moved []MovedIndexes
+}
+
+// MovedIndexes are the new offsets of one chunk's page indexes.
+type MovedIndexes struct{ OffsetIndex, ColumnIndex int64 }
 
 // Extend writes a footer that is the old one with new columns: the root of the
 // schema has more children, the schema more elements, every row group more
-// chunks and greater sizes, column_orders (where there are any) more orders.
+// chunks and greater sizes, column_orders (where there are any) more orders, and
+// page indexes may have moved.
 // All else is written as it was read. It returns the bytes written and fails
 // with [ErrTooLarge] if they are too many.
 func (f *Footer) Extend(w io.Writer, x *Extension) (int64, error) {
@@ -173,14 +187,14 @@ func (f *Footer) writeGroups(out *counter, x *Extension) error {
 	out.write(appendListHeader(nil, len(f.groups), typeStruct))
 	var b []byte
 	for g := range f.groups {
-		chunks, uncompressed, compressed, err := x.Group(g)
+		more, err := x.Group(g)
 		if err != nil {
 			return err
 		}
-		if len(chunks) != len(x.Columns) {
-			return fmt.Errorf("row group %d has %d new chunks for %d new columns", g, len(chunks), len(x.Columns))
+		if len(more.Chunks) != len(x.Columns) {
+			return fmt.Errorf("row group %d has %d new chunks for %d new columns", g, len(more.Chunks), len(x.Columns))
 		}
-		if b, err = f.extendGroup(b[:0], f.groups[g].span, chunks, uncompressed, compressed); err != nil {
+		if b, err = f.extendGroup(b[:0], f.groups[g].span, &more); err != nil {
 			return fmt.Errorf("row group %d: %w", g, err)
 		}
 		if out.write(b); out.err != nil {
@@ -191,7 +205,7 @@ func (f *Footer) writeGroups(out *counter, x *Extension) error {
 }
 
 // extendGroup appends one RowGroup with more chunks and greater sizes.
-func (f *Footer) extendGroup(b []byte, s span, chunks [][]byte, uncompressed, compressed int64) ([]byte, error) {
+func (f *Footer) extendGroup(b []byte, s span, more *GroupExtension) ([]byte, error) {
 	c := &cursor{b: f.raw[:s.to], pos: s.from}
 	last := int16(0)
 	for _, fd := range c.split(nil) {
@@ -201,20 +215,54 @@ func (f *Footer) extendGroup(b []byte, s span, chunks [][]byte, uncompressed, co
 		switch fd.id {
 		case groupColumns:
 			n, _ := in.list()
-			b = appendListHeader(b, n+len(chunks), typeStruct)
-			b = append(b, f.raw[in.pos:fd.end]...)
-			for _, k := range chunks {
+			b = appendListHeader(b, n+len(more.Chunks), typeStruct)
+			if more.Moved == nil {
+				b = append(b, f.raw[in.pos:fd.end]...)
+			} else {
+				b = moveIndexes(b, in, more.Moved[:n])
+			}
+			for _, k := range more.Chunks {
 				b = append(b, k...)
 			}
 		case groupTotal:
-			b = appendInteger(b, in.integer()+uncompressed)
+			b = appendInteger(b, in.integer()+more.Uncompressed)
 		case groupCompressed:
-			b = appendInteger(b, in.integer()+compressed)
+			b = appendInteger(b, in.integer()+more.Compressed)
 		default:
 			b = append(b, f.raw[fd.value:fd.end]...)
 		}
 	}
 	return append(b, typeStop), c.err
+}
+
+// moveIndexes appends the chunks at the cursor with other places for their
+// page indexes.
+func moveIndexes(b []byte, c *cursor, moved []MovedIndexes) []byte {
+	for i := range moved {
+		last := int16(0)
+		for c.err == nil {
+			head := c.pos
+			id, typ := c.fieldHeader(last)
+			last = id
+			b = append(b, c.b[head:c.pos]...)
+			if typ == typeStop {
+				break
+			}
+			value := c.pos
+			if typ != typeTrue && typ != typeFalse {
+				c.skip(typ, 1)
+			}
+			switch id {
+			case chunkOffsetIndex:
+				b = appendInteger(b, moved[i].OffsetIndex)
+			case chunkColumnIndex:
+				b = appendInteger(b, moved[i].ColumnIndex)
+			default:
+				b = append(b, c.b[value:c.pos]...)
+			}
+		}
+	}
+	return b
 }
 
 // extendOrders returns column_orders with one TypeDefinedOrder for each new

@@ -142,7 +142,7 @@ func parse(t testing.TB, raw []byte) *Footer {
 
 // none is an extension that changes nothing.
 func none(f *Footer) *Extension {
-	return &Extension{Entries: f.Entries, Group: func(int) ([][]byte, int64, int64, error) { return nil, 0, 0, nil }}
+	return &Extension{Entries: f.Entries, Group: func(int) (GroupExtension, error) { return GroupExtension{}, nil }}
 }
 
 // graft is an extension of two columns whose chunks have recognisable bytes.
@@ -150,17 +150,17 @@ func graft(f *Footer) *Extension {
 	return &Extension{
 		Columns: []Column{{"new_d", Double}, {"new_b", Boolean}},
 		Entries: append(f.Entries[:len(f.Entries):len(f.Entries)], Entry{Key: "added", Value: "later"}),
-		Group: func(g int) ([][]byte, int64, int64, error) {
-			var chunks [][]byte
+		Group: func(g int) (GroupExtension, error) {
+			x := GroupExtension{Uncompressed: 60, Compressed: 40}
 			_, rows := f.GroupRows(g)
 			for _, p := range []Physical{Double, Boolean} {
 				var e Encoder
 				k := Chunk{Physical: p, Values: rows, Uncompressed: 30, Compressed: 20, DataPage: 500 + int64(g)}
 				e.outer = append(e.outer, 0)
 				k.encode(&e, "new")
-				chunks = append(chunks, e.B)
+				x.Chunks = append(x.Chunks, e.B)
 			}
-			return chunks, 60, 40, nil
+			return x, nil
 		},
 	}
 }

@@ -12,10 +12,13 @@ const (
 	groupRows       = 3
 	groupCompressed = 6
 
-	chunkPath        = 1
-	chunkMeta        = 3
-	chunkOffsetIndex = 4
-	chunkCrypto      = 8
+	chunkPath              = 1
+	chunkMeta              = 3
+	chunkOffsetIndex       = 4
+	chunkOffsetIndexLength = 5
+	chunkColumnIndex       = 6
+	chunkColumnIndexLength = 7
+	chunkCrypto            = 8
 
 	colType         = 1
 	colEncodings    = 2
@@ -38,8 +41,17 @@ type Chunk struct {
 	DataPage     int64 // offset of the first data page
 	Dictionary   int64 // offset of the dictionary page; 0 if there is none
 
-	indexed   bool // it has an offset index
+	// Where its page indexes stand; Length 0 is none.
+	OffsetIndex, ColumnIndex Place
+
 	encodings []byte
+}
+
+// A Place is a run of bytes of the file.
+type Place struct{ Offset, Length int64 }
+
+func (p Place) within(end int64) bool {
+	return p.Length == 0 || p.Length > 0 && p.Offset >= 4 && p.Offset <= end && p.Length <= end-p.Offset
 }
 
 // scanGroups finds the borders of the row groups and their rows.
@@ -77,7 +89,7 @@ func scanGroups(c *cursor) []group {
 // of the package and its callers may rely on.
 func (f *Footer) checkGroups(end int64) error {
 	var chunks []Chunk
-	total := int64(0)
+	total, indexes := int64(0), int64(0)
 	for g := range f.groups {
 		total += f.groups[g].rows
 		var err error
@@ -88,7 +100,10 @@ func (f *Footer) checkGroups(end int64) error {
 			if err := chunks[i].check(&f.Leaves[i], f.groups[g].rows, end); err != nil {
 				return fmt.Errorf("row group %d, column %q: %w", g, f.Leaves[i].Name, err)
 			}
-			f.Indexed = f.Indexed && chunks[i].indexed
+			f.Indexed = f.Indexed && chunks[i].OffsetIndex.Length > 0
+			if indexes += chunks[i].OffsetIndex.Length + chunks[i].ColumnIndex.Length; indexes > end {
+				return fmt.Errorf("row group %d: the page indexes overlap", g)
+			}
 		}
 	}
 	if total != f.Rows {
@@ -106,6 +121,8 @@ func (k *Chunk) check(leaf *Leaf, rows, end int64) error {
 		return errors.New("its sizes are negative")
 	case leaf.MaxRep == 0 && k.Values != rows:
 		return fmt.Errorf("it has %d values for %d rows", k.Values, rows)
+	case !k.OffsetIndex.within(end) || !k.ColumnIndex.within(end):
+		return errors.New("its page index does not lie between header and footer")
 	case k.Values == 0:
 		return nil // there may be no page, and offsets mean nothing
 	}
@@ -156,13 +173,17 @@ func (k *Chunk) scan(c *cursor) error {
 	seen := false
 	var refused error
 	c.fields(func(id int16, typ byte) {
+		if into := k.indexField(id); into != nil {
+			if c.want(typ, chunkIndexType(id), "the place of a page index") {
+				*into = c.integer()
+			}
+			return
+		}
 		switch id {
 		case chunkPath:
 			refused = errors.New("its pages are in another file (file_path), which is not supported")
 		case chunkCrypto:
 			refused = errors.New("it is encrypted, which is not supported: decrypt the file first")
-		case chunkOffsetIndex:
-			k.indexed = true
 		case chunkMeta:
 			if seen {
 				refused = errors.New("it has its meta_data twice")
@@ -181,6 +202,29 @@ func (k *Chunk) scan(c *cursor) error {
 		return errors.New("it has no meta_data")
 	}
 	return nil
+}
+
+// indexField returns what a field of ColumnChunk says of a page index, or nil.
+func (k *Chunk) indexField(id int16) *int64 {
+	switch id {
+	case chunkOffsetIndex:
+		return &k.OffsetIndex.Offset
+	case chunkOffsetIndexLength:
+		return &k.OffsetIndex.Length
+	case chunkColumnIndex:
+		return &k.ColumnIndex.Offset
+	case chunkColumnIndexLength:
+		return &k.ColumnIndex.Length
+	}
+	return nil
+}
+
+// chunkIndexType: offsets are wide, lengths are not.
+func chunkIndexType(id int16) byte {
+	if id == chunkOffsetIndex || id == chunkColumnIndex {
+		return typeI64
+	}
+	return typeI32
 }
 
 // scanMeta reads one ColumnMetaData.

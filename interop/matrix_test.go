@@ -1,0 +1,56 @@
+package interop
+
+import (
+	"errors"
+	"path/filepath"
+	"sort"
+	"testing"
+
+	"catenrich/internal/table"
+)
+
+// TestMatrix grafts onto every file that the makers make, by default and with
+// each other choice of encoding and codec, and lets every judge read it. What
+// a judge cannot read of the input it is not asked of the output; each such
+// case is listed.
+func TestMatrix(t *testing.T) {
+	db := duck(t)
+	files := makeAll(t, db)
+	var names []string
+	for name := range files {
+		names = append(names, name)
+	}
+	sort.Strings(names)
+	specs := []table.Spec{{}, {Encoding: "plain"}, {Codec: "snappy"}, {Codec: "none"}}
+	read := map[string]int{}
+	skipped := map[string]int{}
+	for _, name := range names {
+		t.Run(name, func(t *testing.T) {
+			for i, spec := range specs {
+				out := filepath.Join(t.TempDir(), "out.parquet")
+				graft(t, files[name], out, spec)
+				if err := samePrefix(files[name], out); err != nil {
+					t.Error(err)
+				}
+				for _, j := range judges {
+					err := caught(func() error { return j.judge(db, files[name], out) })
+					var cannot errCannot
+					switch {
+					case errors.As(err, &cannot):
+						skipped[j.name]++
+						if i == 0 {
+							t.Logf("SKIP %s cannot read the input: %v", j.name, err)
+						}
+					case err != nil:
+						t.Errorf("%s, encoding %q, codec %q: %v", j.name, spec.Encoding, spec.Codec, err)
+					default:
+						read[j.name]++
+					}
+				}
+			}
+		})
+	}
+	for _, j := range judges {
+		t.Logf("%s read %d outputs of %d files; %d not asked", j.name, read[j.name], len(files), skipped[j.name])
+	}
+}
