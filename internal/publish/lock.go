@@ -32,8 +32,8 @@ type Lock struct {
 	Warning error // set if the filesystem has no locks, and this one holds nobody off
 }
 
-// Acquire takes the lock for name in dir, which it makes if there is none.
-// While another run holds the lock it waits, or returns a [fault.TryAgain] if
+// Acquire takes the lock for name in dir, which it makes if there is none. Two
+// outputs that share a dir need different names: their paths below it. While another run holds the lock it waits, or returns a [fault.TryAgain] if
 // wait is false. It stops waiting when ctx ends.
 func Acquire(ctx context.Context, dir, name string, wait bool) (*Lock, error) {
 	locks := filepath.Join(dir, LockDir)
