@@ -39,8 +39,8 @@ func models(t testing.TB) map[string]*cosmo.Model {
 	}
 }
 
-// table is a K table with kinks, steep enough to make w turn.
-func table(t testing.TB, turning bool) photo.Correction {
+// kTable is a K table with kinks, steep enough to make w turn.
+func kTable(t testing.TB, turning bool) photo.Correction {
 	z := []float64{-0.05, 0.1, 0.25, 0.4, 0.8, 1, 1.1, 1.5, 3, 6}
 	k := []float64{-0.03, 0.1, 0.3, 0.55, 1.2, 1.3, 1.31, 0.9, 1.5, 3}
 	if turning {
@@ -57,7 +57,7 @@ func table(t testing.TB, turning bool) photo.Correction {
 // limits everywhere in between, and an object whose own magnitude is a limit is
 // its own root. The judge is w on a grid, computed by another road.
 func TestRoots(t *testing.T) {
-	ks := map[string]photo.Correction{"none": photo.None{}, "power law": photo.PowerLaw{Alpha: -1.7, Rest: 0.1}, "table": table(t, false), "turning table": table(t, true)}
+	ks := map[string]photo.Correction{"none": photo.None{}, "power law": photo.PowerLaw{Alpha: -1.7, Rest: 0.1}, "table": kTable(t, false), "turning table": kTable(t, true)}
 	e := photo.Evolution{Q: 0.8, Z0: 0.1}
 	rng := rand.New(rand.NewPCG(5, 8))
 	for mname, m := range models(t) {
@@ -127,7 +127,7 @@ func checkInterval(t *testing.T, name string, mag func(float64) float64, lim Lim
 
 func TestOwnMagnitudeIsOwnRoot(t *testing.T) {
 	m := models(t)["flat"]
-	for kname, k := range map[string]photo.Correction{"none": photo.None{}, "table": table(t, false), "power law": photo.PowerLaw{Alpha: 0.4}} {
+	for kname, k := range map[string]photo.Correction{"none": photo.None{}, "table": kTable(t, false), "power law": photo.PowerLaw{Alpha: 0.4}} {
 		for _, q := range []float64{1, 1.0012} {
 			for _, z := range []float64{1e-5, 0.003, 0.1, 0.7, 2.5} {
 				offset := w(m, k, photo.Evolution{}, z, q, 1.0005)
@@ -151,7 +151,7 @@ func TestOwnMagnitudeIsOwnRoot(t *testing.T) {
 
 func TestRootsStatus(t *testing.T) {
 	m := models(t)["flat"]
-	k := table(t, false)
+	k := kTable(t, false)
 	nan, inf := math.NaN(), math.Inf(1)
 	at := func(z float64) float64 { return w(m, k, photo.Evolution{}, z, 1, 1) }
 	for _, c := range []struct {
@@ -193,7 +193,7 @@ func TestRootsStatus(t *testing.T) {
 
 func BenchmarkRoots(b *testing.B) {
 	m := models(b)["flat"]
-	for kname, k := range map[string]photo.Correction{"none": photo.None{}, "table": table(b, false)} {
+	for kname, k := range map[string]photo.Correction{"none": photo.None{}, "table": kTable(b, false)} {
 		for _, q := range []float64{1, 1.0012} {
 			b.Run(fmt.Sprintf("%s/q=%v", kname, q), func(b *testing.B) {
 				const n = 2048

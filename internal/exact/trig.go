@@ -122,7 +122,7 @@ func Atan2(y, x float64) float64 {
 	}
 	var hi, lo float64
 	switch {
-	case a == 0:
+	case a == 0 || math.IsInf(b, 1):
 	case math.IsInf(a, 1):
 		hi, lo = 2*piOver4, piOver2Lo
 	case a <= b:
@@ -142,7 +142,7 @@ func Atan2(y, x float64) float64 {
 }
 
 // Asin returns the angle in radians, -pi/2 to pi/2, whose sine is x, to within
-// 1.5 ulp; NaN for |x| > 1.
+// 2 ulp; NaN for |x| > 1.
 func Asin(x float64) float64 {
 	if !(math.Abs(x) <= 1) {
 		return math.NaN()
