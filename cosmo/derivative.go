@@ -1,0 +1,51 @@
+package cosmo
+
+import "math"
+
+// slope evaluates the derivative of the polynomial.
+func (p *polynomial) slope(t float64) float64 {
+	return p[1] + float64(t*(2*p[2]+float64(t*(3*p[3]+float64(t*(4*p[4]+float64(t*(5*p[5]+float64(t*(6*p[6]+float64(t*7*p[7])))))))))))
+}
+
+// slowStep is the step of ln(1+z) over which quantities that no cell holds are
+// differenced: the cube root of the rounding balances it with the curvature.
+const slowStep = 0x1p-17
+
+// LogSlopeE fills out with d ln E/d ln(1+z) = 1 + q, q the deceleration
+// parameter, for the rows of a base that [Model.Fill] has filled with E. It is
+// the derivative of the cells' polynomials: good to 1e-10, which is ample for
+// errors.
+func (m *Model) LogSlopeE(out []float64, b *Base) {
+	for i := range out {
+		out[i] = m.past.rate[b.cell[i]].slope(b.t[i]) * b.X[i] / b.E[i]
+	}
+	for _, i := range b.slow {
+		z := b.Z[i]
+		d := slowStep * (1 + z)
+		out[i] = (m.slowRate(z+d) - m.slowRate(z-d)) / (2 * slowStep) / b.E[i]
+	}
+}
+
+// ContactLostSlope fills out with the derivative of [ContactLost] by ln(1+z),
+// in Hubble times, for the rows of a filled base: NaN where there is none.
+func (m *Model) ContactLostSlope(out []float64, b *Base) {
+	m.Prepare(ContactLost)
+	for i, z := range b.Z {
+		out[i] = m.contactLostSlope(z)
+	}
+}
+
+func (m *Model) contactLostSlope(z float64) float64 {
+	if m.future.ages == nil || !(z > 0 && z <= MaxRedshift) {
+		return math.NaN()
+	}
+	bits := math.Float64bits(z)
+	i := int(bits>>mantissa) - (1023 + firstLost)
+	if i < 0 || m.future.octaves[i].slow {
+		d := slowStep * z // the age goes as -ln z where z is small
+		return (m.slowContactLost(z+d) - m.slowContactLost(z-d)) / (2 * d) * (1 + z)
+	}
+	o := &m.future.octaves[i]
+	p := &m.future.ages[o.first+int32(bits&(1<<mantissa-1)>>(o.shift&63))]
+	return p.slope(z-math.Float64frombits(bits&o.mask)) * (1 + z)
+}
