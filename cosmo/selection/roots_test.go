@@ -217,3 +217,5 @@ func BenchmarkRoots(b *testing.B) {
 		}
 	}
 }
+
+func appendRow(text []byte, w, v float64) []byte { return fmt.Appendf(text, "%.6f %.9f\n", w, v) }
