@@ -46,7 +46,12 @@ type band struct {
 func template(b testing.TB, from, to float64) *photo.Synthetic {
 	var sed, pass []byte
 	for w := 1000.0; w < 12000; w *= 1.001 {
-		sed = appendRow(sed, w, 1.2+math.Sin(w/300)+math.Exp(-math.Pow((w-5000)/20, 2)))
+		f := math.Pow(w/5000, -0.5) * (1 + 0.05*math.Sin(w/40)) // bands
+		if w < 4000 {
+			f *= 0.5 // a break
+		}
+		f += 0.6 * math.Exp(-math.Pow((w-5000)/15, 2)) // a line
+		sed = appendRow(sed, w, f)
 	}
 	for w := from; w <= to; w += (to - from) / 80 {
 		pass = appendRow(pass, w, math.Sin((w-from)/(to-from)*math.Pi)+1e-3)

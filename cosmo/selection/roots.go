@@ -246,8 +246,8 @@ func (o *object) tabulated(v *inverse, limit float64) float64 {
 		growth := float64(now*slope) / (1 + z) // of the difference, by w
 		d = (now + float64(growth*d)) / (1 + growth)
 		if z, slope = v.at(limit - d); !(math.Abs(z-before) > rounding*z) {
-			break
+			return z // or NaN
 		}
 	}
-	return z
+	return math.NaN()
 }

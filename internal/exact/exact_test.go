@@ -192,6 +192,10 @@ func TestPowersOfTen(t *testing.T) {
 
 func TestLog10Slice(t *testing.T) {
 	x := []float64{-1, 0, 5e-324, 1e-310, 0.3, 1, 1.0000001, 7e5, math.MaxFloat64, math.Inf(1), math.NaN()}
+	r := rand.New(rand.NewPCG(2, 2))
+	for range 10000 {
+		x = append(x, math.Exp(1400*r.Float64()-700), 0.9+0.2*r.Float64())
+	}
 	got := make([]float64, len(x)+1)
 	Log10Slice(got, x)
 	for i, v := range x {

@@ -123,10 +123,30 @@ func log10(x float64) float64 {
 func Log10Slice(dst, src []float64) {
 	dst = dst[:len(src)]
 	for i, x := range src {
-		if x > 0 && x <= math.MaxFloat64 {
-			dst[i] = log10(x)
-		} else {
-			dst[i] = logSpecial(x)
+		b := math.Float64bits(x)
+		if b-1<<52 >= 0x7fe<<52 { // subnormal, negative, infinite or NaN
+			dst[i] = Log10(x)
+			continue
 		}
+		// reduce and log10, written out because the compiler inlines neither
+		off := b - 0x3fe8000000000000
+		m := b - off&(0xfff<<52)
+		c := &logTable[min((off&(1<<52-1)+1<<44)>>45, 128)]
+		F := math.Float64frombits((m + 1<<44) &^ (1<<45 - 1))
+		d := math.Float64frombits(m) - F
+		rh := math.Float64frombits(math.Float64bits(d*c.inv) &^ (1<<27 - 1))
+		rl := float64((d - float64(rh*F)) * c.inv)
+		k := float64(int64(off) >> 52)
+		r := rh + rl
+		p := float64(r*(invLn10/7)) - invLn10/6
+		p = float64(r*p) + invLn10/5
+		p = float64(r*p) - invLn10/4
+		p = float64(r*p) + invLn10/3
+		p = float64(r*p) - invLn10/2
+		p = float64(float64(r*r) * p)
+		base := float64(k*log2Hi) + c.log10
+		s, e := fastTwoSum(base, float64(rh*invLn10Hi))
+		lo := float64(rl*invLn10) + float64(rh*invLn10Lo)
+		dst[i] = s + (e + (lo + (p + (float64(k*log2Lo) + c.l10Lo))))
 	}
 }
