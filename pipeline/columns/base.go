@@ -2,6 +2,7 @@ package columns
 
 import (
 	"catenrich/cosmo"
+	"catenrich/cosmo/spread"
 	"catenrich/internal/exact"
 	"catenrich/pipeline/job"
 )
@@ -20,8 +21,12 @@ type Base struct {
 	cutBands  []int
 	item      int // member of the family at hand
 
-	angularMemo, luminosityMemo, mpcMemo, modulusMemo memo
-	absoluteMemo                                      []memo // of each band
+	angularMemo, luminosityMemo, mpcMemo, modulusMemo, logSlopeMemo memo
+	absoluteMemo                                                    []memo // of each band
+
+	inputs        spread.Inputs // of errors
+	partial       spread.Partial
+	spare, spare2 []float64
 }
 
 // A memo is a slice that is computed once a model and span.
@@ -41,7 +46,11 @@ func (m *memo) ask(n int) (v []float64, filled bool) {
 }
 
 func newBase(r *Rows, k *Kernel) Base {
-	b := Base{Rows: r, job: &k.job.Settings, cutBands: k.cutBands, angularMemo: newMemo(), luminosityMemo: newMemo(), mpcMemo: newMemo(), modulusMemo: newMemo()}
+	b := Base{
+		Rows: r, job: &k.job.Settings, cutBands: k.cutBands,
+		angularMemo: newMemo(), luminosityMemo: newMemo(), mpcMemo: newMemo(), modulusMemo: newMemo(), logSlopeMemo: newMemo(),
+		spare: make([]float64, span), spare2: make([]float64, span),
+	}
 	for range r.bands {
 		b.absoluteMemo = append(b.absoluteMemo, newMemo())
 	}
@@ -51,7 +60,11 @@ func newBase(r *Rows, k *Kernel) Base {
 // begin forgets what was computed for another model or span.
 func (b *Base) begin(m *model) {
 	b.model, b.Scales, b.surveyors = m.Model, &m.scales, m.surveyors
-	b.angularMemo.done, b.luminosityMemo.done, b.mpcMemo.done, b.modulusMemo.done = false, false, false, false
+	b.inputs = spread.Inputs{
+		HubbleDistance: m.scales.Length, HubbleTime: m.scales.Time, H0: m.h0, Antipode: m.antipode, Base: &b.Base,
+		ObsRatio: b.Rows.ObsRatio, FrameRatio: b.Rows.FrameRatio,
+	}
+	b.angularMemo.done, b.luminosityMemo.done, b.mpcMemo.done, b.modulusMemo.done, b.logSlopeMemo.done = false, false, false, false, false
 	for i := range b.absoluteMemo {
 		b.absoluteMemo[i].done = false
 	}

@@ -40,6 +40,12 @@ func (k *Kernel) reads(role job.Role) bool {
 		s := &k.job.Settings.Redshift
 		return k.terms&directionTerm != 0 || s.Frame != "as-given" && s.Frame != s.DistancesIn || s.Frame == "cmb" || s.Frame == "local-group"
 	}
+	switch {
+	case role == job.RoleRedshiftError || role == job.RoleVelocityError:
+		return k.terms&errorTerm != 0
+	case role == job.RoleRedshiftLower || role == job.RoleRedshiftUpper:
+		return k.terms&quantileTerm != 0
+	}
 	for i := range k.job.Bands {
 		if k.bandReads(i, role) {
 			return true
@@ -58,6 +64,12 @@ func (k *Kernel) bandReads(i int, role job.Role) bool {
 		return terms&apparentTerm != 0
 	case job.BandRole(b.Name, job.PartExtinction):
 		return terms&extinctionTerm != 0
+	case job.BandRole(b.Name, job.PartError):
+		return terms&apparentTerm != 0 && terms&errorTerm != 0
+	case job.BandRole(b.Name, job.PartExtinctionError):
+		return terms&extinctionTerm != 0 && terms&errorTerm != 0
+	case job.RoleEBVError:
+		return terms&extinctionTerm != 0 && terms&errorTerm != 0 && b.Extinction == "coefficient"
 	case job.BandRole(b.Name, job.PartK), job.BandRole(b.Name, job.PartTemplate):
 		return terms&kTerm != 0
 	}
@@ -75,8 +87,8 @@ func (k *Kernel) selectionReads(role job.Role) bool {
 
 func (k *Kernel) valueReads(role job.Role) bool {
 	for kind, term := range map[string]Term{"line.": lineTerm, "radio.": radioTerm, "size.": sizeTerm} {
-		if k.terms&term != 0 && strings.HasPrefix(string(role), kind) && strings.HasSuffix(string(role), "."+job.PartValue) {
-			return true
+		if k.terms&term != 0 && strings.HasPrefix(string(role), kind) {
+			return strings.HasSuffix(string(role), "."+job.PartValue) || k.terms&errorTerm != 0
 		}
 	}
 	return false

@@ -8,10 +8,15 @@ import (
 	"catenrich/pipeline/job"
 )
 
-// groupAll asks for every column that the job can have.
-const groupAll = "all"
+// Names that stand for many columns, besides the groups of the table.
+const (
+	groupAll       = "all"       // every value that the job can have
+	groupErrors    = "errors"    // the errors of the columns that the job names
+	groupIntervals = "intervals" // their intervals
+)
 
-// Groups returns the names of the groups in table order, "all" last.
+// Groups returns the names of the groups in table order, then "all", and
+// "errors" and "intervals", which speak of the columns named beside them.
 func Groups() []string {
 	var names []string
 	for i := range registry {
@@ -19,7 +24,7 @@ func Groups() []string {
 			names = append(names, registry[i].Group)
 		}
 	}
-	return append(names, groupAll)
+	return append(names, groupAll, groupErrors, groupIntervals)
 }
 
 // An instance is a column that a job can have: an entry, and a member of its
@@ -27,6 +32,7 @@ func Groups() []string {
 type instance struct {
 	*Entry
 	item int
+	form Form
 	name string
 	why  string // what the job does not set; "" if it can have the column
 }
@@ -37,14 +43,69 @@ func instances(s *job.Settings) []instance {
 	for i := range registry {
 		e := &registry[i]
 		for item, member := range e.Family.members(s) {
-			in := instance{Entry: e, item: item, name: e.Name + member}
-			if e.Missing != nil {
-				in.why = e.Missing(s, item)
+			for form := ValueForm; form <= HighForm; form++ {
+				if !e.has(form) {
+					continue
+				}
+				in := instance{Entry: e, item: item, form: form, name: e.Name + member + form.suffix()}
+				if e.Missing != nil {
+					in.why = e.Missing(s, item)
+				}
+				if in.why == "" {
+					in.why = form.missing(s, e, item)
+				}
+				all = append(all, in)
 			}
-			all = append(all, in)
 		}
 	}
 	return all
+}
+
+// has reports whether the entry can be asked for in the form.
+func (e *Entry) has(f Form) bool {
+	switch f {
+	case ErrorForm:
+		return e.Spread.Error != nil
+	case LowForm, HighForm:
+		return e.Spread.Interval
+	}
+	return true
+}
+
+// missing says why a job cannot have a form of a column.
+func (f Form) missing(s *job.Settings, e *Entry, item int) string {
+	_, sigmaZ := s.Catalogue[job.RoleRedshiftError]
+	_, sigmaV := s.Catalogue[job.RoleVelocityError]
+	_, quantiles := s.Catalogue[job.RoleRedshiftLower]
+	switch {
+	case f == ErrorForm && !(sigmaZ || sigmaV || s.Redshift.PeculiarVelocitySigma > 0 || e.Family.hasErrors(s, item)):
+		return "an error: columns.redshift_error, columns.velocity_error, redshift.peculiar_velocity_sigma or one of what it is made of"
+	case (f == LowForm || f == HighForm) && !quantiles:
+		return "columns.redshift_lower and columns.redshift_upper"
+	}
+	return ""
+}
+
+// hasErrors reports whether the catalogue has an error of the measured value.
+func (f Family) hasErrors(s *job.Settings, item int) bool {
+	var roles []job.Role
+	switch f {
+	case PerBand:
+		name := s.Bands[item].Name
+		roles = []job.Role{job.BandRole(name, job.PartError), job.BandRole(name, job.PartExtinctionError), job.RoleEBVError}
+	case PerLine:
+		roles = []job.Role{job.OtherRole("line", s.Lines[item].Name, job.PartError)}
+	case PerRadio:
+		roles = []job.Role{job.OtherRole("radio", s.Radios[item].Name, job.PartError)}
+	case PerSize:
+		roles = []job.Role{job.OtherRole("size", s.Sizes[item].Name, job.PartError)}
+	}
+	for _, role := range roles {
+		if _, ok := s.Catalogue[role]; ok {
+			return true
+		}
+	}
+	return false
 }
 
 // Catalog is the table of columns as the job package asks for it.
@@ -66,17 +127,41 @@ func (Catalog) Expand(s *job.Settings, names []string) ([]string, []error) {
 			continue
 		}
 		listed[name] = true
+		if name == groupErrors || name == groupIntervals {
+			continue
+		}
 		if err := want(all, name, wanted); err != nil {
 			wrong = append(wrong, err)
 		}
 	}
 	expanded := []string{}
+	wantSpread(all, listed, wanted)
 	for i := range all {
 		if wanted[all[i].name] {
 			expanded = append(expanded, all[i].name)
 		}
 	}
 	return expanded, wrong
+}
+
+// wantSpread adds the errors and intervals of the wanted columns, as far as the
+// job can have them.
+func wantSpread(all []instance, listed, wanted map[string]bool) {
+	value := ""
+	for i := range all {
+		in := &all[i]
+		if in.form == ValueForm {
+			value = in.name
+			continue
+		}
+		group := groupIntervals
+		if in.form == ErrorForm {
+			group = groupErrors
+		}
+		if listed[group] && wanted[value] && in.why == "" {
+			wanted[in.name] = true
+		}
+	}
 }
 
 // want marks the columns that one name or group stands for.
@@ -92,7 +177,7 @@ func want(all []instance, name string, wanted map[string]bool) error {
 	}
 	group, why := false, ""
 	for i := range all {
-		if name != groupAll && name != all[i].Group {
+		if name != groupAll && name != all[i].Group || all[i].form != ValueForm {
 			continue
 		}
 		if all[i].why == "" {

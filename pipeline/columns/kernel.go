@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"catenrich/cosmo"
+	"catenrich/cosmo/spread"
 	"catenrich/internal/status"
 	"catenrich/internal/table"
 	"catenrich/pipeline/job"
@@ -36,6 +37,10 @@ type model struct {
 	scales    Scales
 	columns   []output
 	surveyors []surveyor
+	h0        float64
+	antipode  float64              // D_C/D_H
+	rimUses   cosmo.Quantity       // of columns with intervals
+	turns     map[int]spread.Turns // of these columns, by their place in Batch.Out
 }
 
 // output is one added column: its entry, the member of its family, and its
@@ -43,6 +48,7 @@ type model struct {
 type output struct {
 	entry *Entry
 	item  int
+	form  Form
 	at    int
 }
 
@@ -54,11 +60,11 @@ func New(j *job.Job) *Kernel {
 	}
 	wanted := k.wanted()
 	for i, m := range j.Models {
-		c := model{Model: m, scales: scales(m, j.Settings.LengthUnit)}
+		c := model{Model: m, scales: scales(m, j.Settings.LengthUnit), h0: m.Params().H0, antipode: m.Antipode(), turns: make(map[int]spread.Turns)}
 		for _, in := range wanted {
 			switch {
 			case in.Scope == PerModel:
-				c.uses |= in.Uses
+				c.use(in)
 				c.columns = append(c.columns, k.add(in, j.Settings.Cosmologies[i].Suffix))
 			case i == 0:
 				k.once = append(k.once, k.add(in, ""))
@@ -77,11 +83,27 @@ func New(j *job.Job) *Kernel {
 				c.surveyors = append(c.surveyors, surveyor{})
 			}
 		}
+		for _, o := range c.columns {
+			if o.form == LowForm || o.form == HighForm {
+				c.turns[o.at] = k.findTurns(&c, o)
+			}
+		}
 		k.models = append(k.models, c)
 	}
 	k.add(instance{Entry: &statusEntry, name: StatusName}, "")
 	k.needs = k.listNeeds()
 	return k
+}
+
+// use notes which quantities a column reads.
+func (m *model) use(in instance) {
+	m.uses |= in.Uses
+	switch in.form {
+	case ErrorForm:
+		m.uses |= in.Spread.Uses
+	case LowForm, HighForm:
+		m.rimUses |= in.Uses
+	}
 }
 
 // wanted lists the job's columns, and notes what they read.
@@ -96,10 +118,17 @@ func (k *Kernel) wanted() []instance {
 			continue
 		}
 		list = append(list, in)
-		k.terms |= in.Terms
+		terms := in.Terms
+		switch in.form {
+		case ErrorForm:
+			terms |= errorTerm
+		case LowForm, HighForm:
+			terms |= quantileTerm
+		}
+		k.terms |= terms
 		switch in.Family {
 		case PerBand:
-			k.bandTerms[in.item] |= in.Terms
+			k.bandTerms[in.item] |= terms
 		case PerCut:
 			k.bandTerms[k.cutBands[in.item]] |= in.Terms
 		case PerSelection:
@@ -129,7 +158,11 @@ func (k *Kernel) add(in instance, suffix string) output {
 	e, s := in.Entry, &k.job.Settings
 	field := table.Field{
 		Name: s.Prefix + in.name + suffix, Kind: e.Kind(), Unit: e.Unit.VOUnit(s.LengthUnit), UCD: e.UCD,
-		Description: e.Doc, Source: e.From,
+		Description: in.form.describe(e.Doc), Source: e.From,
+	}
+	if in.form != ValueForm {
+		field.Kind = table.Float
+		field.UCD = "stat.error;" + field.UCD
 	}
 	if note := e.Unit.Note(s.LengthUnit); note != "" {
 		field.Description += "; " + note
@@ -139,7 +172,7 @@ func (k *Kernel) add(in instance, suffix string) output {
 	}
 	k.added = append(k.added, field)
 	k.stats = append(k.stats, e)
-	return output{e, in.item, len(k.added) - 1}
+	return output{e, in.item, in.form, len(k.added) - 1}
 }
 
 // Added returns the added columns in output order, the status column last.
@@ -150,6 +183,9 @@ type Scratch struct {
 	bound *Bound // whose rows it was made for
 	rows  Rows
 	base  Base
+
+	low, high *rim         // of intervals; nil where the job has none
+	ends      [5][]float64 // of the interval at hand
 }
 
 // Run computes every added column of a decoded batch, and counts it.
@@ -165,6 +201,12 @@ func (b *Bound) Run(batch *table.Batch, s *Scratch, tally Tally) {
 		s.rows.Status = bits[lo:hi]
 		b.redshift.fill(batch, &s.rows, lo, hi)
 		s.rows.fillTerms(batch, lo, hi)
+		if b.terms&errorTerm != 0 {
+			s.rows.fillSigmas(b.redshift, batch, lo, hi)
+		}
+		if s.low != nil {
+			s.fillRims(b.redshift, batch, lo, hi)
+		}
 		b.compute(batch, s, lo, hi)
 		tally.count(batch, &s.rows, lo, hi)
 	}
@@ -183,7 +225,11 @@ func (s *Scratch) fit(b *Bound) {
 	}
 	values := func(kind string, term Term, names []string) (rows []valueRows) {
 		for _, name := range names {
-			rows = append(rows, valueRows{at: b.where(job.OtherRole(kind, name, job.PartValue)), used: b.terms&term != 0})
+			v := valueRows{at: b.where(job.OtherRole(kind, name, job.PartValue)), sigmaAt: -1, used: b.terms&term != 0}
+			if v.used && b.terms&errorTerm != 0 {
+				v.sigmaAt = b.where(job.OtherRole(kind, name, job.PartError))
+			}
+			rows = append(rows, v)
 		}
 		return rows
 	}
@@ -194,6 +240,12 @@ func (s *Scratch) fit(b *Bound) {
 		s.rows.selections = append(s.rows.selections, newSelectionRows(&j.Selections[i], j.Bands, b.where, b.selected[i]))
 	}
 	s.base = newBase(&s.rows, b.Kernel)
+	if b.terms&quantileTerm != 0 {
+		s.low, s.high = newRim(b), newRim(b)
+		for i := range s.ends {
+			s.ends[i] = make([]float64, span)
+		}
+	}
 }
 
 // fillTerms computes what columns read besides redshifts.
@@ -203,7 +255,7 @@ func (r *Rows) fillTerms(batch *table.Batch, lo, hi int) {
 	}
 	for _, list := range [][]valueRows{r.lines, r.radios, r.sizes} {
 		for i := range list {
-			list[i].fill(batch, lo, hi)
+			list[i].fill(batch, r, lo, hi)
 		}
 	}
 	for i := range r.selections {
@@ -214,24 +266,30 @@ func (r *Rows) fillTerms(batch *table.Batch, lo, hi int) {
 // compute fills the output columns for rows lo to hi of the batch.
 func (k *Kernel) compute(b *table.Batch, s *Scratch, lo, hi int) {
 	for _, o := range k.once {
-		s.base.item = o.item
-		k.column(o, &s.base, b, lo, hi)
+		k.column(o, s, nil, b, lo, hi)
 	}
 	for i := range k.models {
 		m := &k.models[i]
 		m.Fill(&s.base.Base, m.uses, s.rows.ZModel)
 		s.base.begin(m)
+		if s.low != nil {
+			for _, r := range []*rim{s.low, s.high} {
+				m.Fill(&r.base.Base, m.rimUses, r.rows.ZModel)
+				r.base.begin(m)
+			}
+		}
 		for _, o := range m.columns {
-			s.base.item = o.item
-			k.column(o, &s.base, b, lo, hi)
+			k.column(o, s, m, b, lo, hi)
 		}
 	}
 }
 
 // column computes one column and makes sure that each of its null cells has a
-// bit of the row's status that says why.
-func (k *Kernel) column(o output, base *Base, b *table.Batch, lo, hi int) {
-	rows := base.Rows
+// bit of the row's status that says why. m is nil for a column that does not
+// depend on the model.
+func (k *Kernel) column(o output, s *Scratch, m *model, b *table.Batch, lo, hi int) {
+	base, rows := &s.base, &s.rows
+	base.item = o.item
 	if o.entry.Test != nil {
 		out := b.Out[o.at].Flag[lo:hi]
 		o.entry.Test(base, out)
@@ -243,11 +301,23 @@ func (k *Kernel) column(o output, base *Base, b *table.Batch, lo, hi int) {
 		return
 	}
 	out := b.Out[o.at].Float[lo:hi]
-	o.entry.Eval(base, out)
+	switch o.form {
+	case ValueForm:
+		o.entry.Eval(base, out)
+	case ErrorForm:
+		o.entry.Spread.Error(base, out)
+	default:
+		s.interval(o, m, out)
+	}
 	for i, v := range out {
-		if !(math.Abs(v) <= math.MaxFloat64) {
-			out[i] = math.NaN()
+		if math.Abs(v) <= math.MaxFloat64 {
+			continue
+		}
+		out[i] = math.NaN()
+		if o.form == ValueForm {
 			rows.blame(o.entry, i)
+		} else {
+			rows.blameSpread(o, i)
 		}
 	}
 }

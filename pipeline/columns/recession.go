@@ -2,6 +2,7 @@ package columns
 
 import (
 	"catenrich/cosmo"
+	"catenrich/cosmo/spread"
 	"catenrich/internal/table"
 )
 
@@ -10,7 +11,8 @@ var recession = []Entry{
 		Name: "recession_velocity_now", Group: "recession", Scope: PerModel, Unit: Speed, UCD: "phys.veloc;phys.cosmology",
 		Doc:  "recession velocity today, H0 times the comoving distance (Hubble flow only)",
 		From: "Davis & Lineweaver 2004", Uses: cosmo.DC,
-		Eval: func(b *Base, out []float64) { scale(out, b.DC, cosmo.SpeedOfLight) },
+		Eval:   func(b *Base, out []float64) { scale(out, b.DC, cosmo.SpeedOfLight) },
+		Spread: linear(0, (*spread.Inputs).VelocityNow),
 	},
 	{
 		Name: "recession_velocity_at_emission", Group: "recession", Scope: PerModel, Unit: Speed, UCD: "phys.veloc;phys.cosmology",
@@ -22,6 +24,7 @@ var recession = []Entry{
 				out[i] = e[i] * dc[i] / x[i] * cosmo.SpeedOfLight
 			}
 		},
+		Spread: sloped(cosmo.DC, (*spread.Inputs).VelocityAtEmission),
 	},
 	{
 		Name: "superluminal_now", Group: "recession", Scope: PerModel, UCD: "meta.code;phys.cosmology",
@@ -50,7 +53,8 @@ var recession = []Entry{
 		Name: "redshift_drift", Group: "recession", Scope: PerModel, Unit: PerYear, UCD: "src.redshift;arith.rate",
 		Doc:  "change of the redshift per year of our time, (1+z) H0 - H(z)",
 		From: "Sandage 1962; Loeb 1998", Uses: cosmo.Drift,
-		Eval: func(b *Base, out []float64) { scale(out, b.Drift, b.Scales.Rate) },
+		Eval:   func(b *Base, out []float64) { scale(out, b.Drift, b.Scales.Rate) },
+		Spread: sloped(0, (*spread.Inputs).RedshiftDrift),
 	},
 	{
 		Name: "velocity_drift", Group: "recession", Scope: PerModel, Unit: SpeedDrift, UCD: "phys.veloc;arith.rate",
@@ -59,6 +63,7 @@ var recession = []Entry{
 		Eval: func(b *Base, out []float64) {
 			divide(out, b.Drift, b.X, b.Scales.Rate*cosmo.SpeedOfLight*centimetresPerKm)
 		},
+		Spread: sloped(0, (*spread.Inputs).VelocityDrift),
 	},
 }
 

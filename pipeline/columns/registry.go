@@ -63,9 +63,13 @@ type Entry struct {
 	// status bit has been set, else the kernel finds out why.
 	Eval func(b *Base, out []float64)
 
-	// Spread asks for the exact sum and the histogram of the column among the
+	// Summed asks for the exact sum and the histogram of the column among the
 	// statistics; range and nulls are counted of every column.
-	Spread bool
+	Summed bool
+
+	// Spread says how the column is uncertain; the zero value: it has neither
+	// error nor interval.
+	Spread spreadRule
 
 	// Test is the same for a column of flags: table.True, False or Null.
 	Test func(b *Base, out []uint8)

@@ -5,6 +5,7 @@ import (
 
 	"catenrich/cosmo"
 	"catenrich/cosmo/frame"
+	"catenrich/cosmo/spread"
 	"catenrich/internal/status"
 	"catenrich/internal/table"
 	"catenrich/pipeline/job"
@@ -35,6 +36,7 @@ type Rows struct {
 	bands                []bandRows
 	lines, radios, sizes []valueRows
 	selections           []selectionRows
+	sigmas               spread.Sigmas
 
 	buffers rowBuffers
 }
@@ -44,12 +46,12 @@ type Rows struct {
 type rowBuffers struct {
 	zIn, zFrame, zObs, zCos, zModel, xObs []float64
 	toAngular, obsRatio, frameRatio       []float64
-	ra, dec, scratch                      []float64
+	ra, dec, scratch, sigma               []float64
 }
 
 func (b *rowBuffers) allocate() {
 	for _, buffer := range []*[]float64{
-		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.xObs, &b.toAngular, &b.obsRatio, &b.frameRatio, &b.ra, &b.dec, &b.scratch,
+		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.xObs, &b.toAngular, &b.obsRatio, &b.frameRatio, &b.ra, &b.dec, &b.scratch, &b.sigma,
 	} {
 		*buffer = make([]float64, span)
 	}
@@ -70,6 +72,8 @@ type redshifter struct {
 	peculiar     int // column of the peculiar velocity, or -1
 	position     position
 	directions   bool // some column needs unit vectors
+	errors       errorInput
+	floor        float64 // scatter of peculiar velocities, km/s
 }
 
 func newRedshifter(s *job.Settings, where func(job.Role) int, terms Term) (*redshifter, error) {
@@ -77,6 +81,7 @@ func newRedshifter(s *job.Settings, where func(job.Role) int, terms Term) (*reds
 		at: where(job.RoleRedshift), unit: s.Redshift.VelocityUnit, signed: s.Redshift.Signed,
 		low: math.Inf(-1), high: math.Inf(1),
 		heliocentric: where(job.RoleRedshiftHeliocentric), peculiar: where(job.RolePeculiarVelocity),
+		errors: newErrorInput(where), floor: s.Redshift.PeculiarVelocitySigma,
 		position: position{ra: where(job.RoleRightAscension), dec: where(job.RoleDeclination)},
 	}
 	if at := where(job.RoleVelocity); at >= 0 {

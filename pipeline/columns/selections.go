@@ -35,13 +35,13 @@ var selections = []Entry{
 	{
 		Name: "v_over_v_max", Group: "selection", Scope: PerModel, Family: PerSelection, UCD: "phys.volume;arith.ratio",
 		Doc:  "the object's own volume over its V_max, both from z_min; evenly spread from 0 to 1 in a complete sample",
-		From: "Schmidt 1968", Uses: cosmo.DM, Terms: selectionTerm, Spread: true,
+		From: "Schmidt 1968", Uses: cosmo.DM, Terms: selectionTerm, Summed: true,
 		Eval: func(b *Base, out []float64) { b.volumes(&selection.Volumes{OverVmax: out}) },
 	},
 	{
 		Name: "vmax_weight", Group: "selection", Scope: PerModel, Family: PerSelection, Unit: PerVolume, UCD: "stat.weight",
 		Doc:  "1/(C V_max), the object's share of the space density",
-		From: "Felten 1976", Uses: cosmo.DM, Terms: selectionTerm, Spread: true,
+		From: "Felten 1976", Uses: cosmo.DM, Terms: selectionTerm, Summed: true,
 		Eval: func(b *Base, out []float64) {
 			b.volumes(&selection.Volumes{Weight: out})
 			perUnit := 1 / b.Scales.PerMpc

@@ -23,7 +23,7 @@ func (k *Kernel) NewTally() Tally {
 		if k.added[i].Kind == table.Float {
 			c.Extent = new(ledger.Extent)
 		}
-		if e.Spread {
+		if e.Summed {
 			c.Sum = new(ledger.Sum)
 		}
 		if axis, ok := e.axis(name); ok {
@@ -39,7 +39,7 @@ func (e *Entry) axis(name string) (a ledger.Axis, ok bool) {
 	switch {
 	case e.Unit == Magnitude && e.Scope == PerModel:
 		return ledger.MagnitudeAxis(name), true
-	case e.Spread && e.Unit == None:
+	case e.Summed && e.Unit == None:
 		return ledger.FractionAxis(name), true
 	}
 	return a, false

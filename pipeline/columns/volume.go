@@ -1,13 +1,17 @@
 package columns
 
-import "catenrich/cosmo"
+import (
+	"catenrich/cosmo"
+	"catenrich/cosmo/spread"
+)
 
 var volumes = []Entry{
 	{
 		Name: "comoving_volume", Group: "volumes", Scope: PerModel, Unit: Volume, UCD: "phys.volume;phys.cosmology",
 		Doc:  "comoving volume within this redshift, whole sky",
 		From: "Hogg 1999, eq. 29", Uses: cosmo.Volume,
-		Eval: func(b *Base, out []float64) { scale(out, b.Volume, b.Scales.Volume) },
+		Eval:   func(b *Base, out []float64) { scale(out, b.Volume, b.Scales.Volume) },
+		Spread: linear(cosmo.DC|cosmo.DM, (*spread.Inputs).Volume),
 	},
 	{
 		Name: "comoving_volume_element", Group: "volumes", Scope: PerModel, Unit: VolumePerSr, UCD: "phys.volume;phys.cosmology",
@@ -19,5 +23,6 @@ var volumes = []Entry{
 				out[i] = dm[i] * dm[i] / e[i] * b.Scales.Volume
 			}
 		},
+		Spread: sloped(distanceUses, (*spread.Inputs).VolumeElement),
 	},
 }
