@@ -354,12 +354,14 @@ func (k *Kernel) findTurns(m *model, o output) spread.Turns {
 }
 
 // blameSpread gives the reason for an error or an interval that is null where
-// the row's bits do not: the column itself is null, or the interval's end has
-// no value.
+// the row's bits do not: the column itself is null, or has no value at an end
+// of the interval.
 func (r *Rows) blameSpread(o output, i int) {
-	if o.form != ErrorForm && r.ZModel[i] == r.ZModel[i] {
+	switch {
+	case o.form == ErrorForm && r.Status[i]&status.Error != 0:
+	case o.form != ErrorForm && r.ZModel[i] == r.ZModel[i]:
 		r.Status[i] |= status.Quantiles
-		return
+	default:
+		r.blame(o.entry, i)
 	}
-	r.blame(o.entry, i)
 }
