@@ -18,8 +18,10 @@ const (
 // every machine. LZ4_RAW is not among them: two of the readers that outputs
 // are tested with fail on its pages with nulls.
 type codec struct {
-	id   int32
-	zstd *zstd.Encoder // of one goroutine at a time
+	id      int32
+	fastest bool
+	zstd    *zstd.Encoder // of one goroutine at a time
+	packed  []byte
 }
 
 // codecID translates the job's name of a codec.
@@ -46,7 +48,7 @@ func codecID(name string, level int) (int32, error) {
 // than the faster encoder in klauspost/compress, whose assembly and Go code
 // give different bytes.
 func newCodec(id int32, level int) codec {
-	c := codec{id: id}
+	c := codec{id: id, fastest: level == 0}
 	if id == codecZstd {
 		speed := zstd.SpeedFastest
 		if level > 0 {
@@ -63,9 +65,14 @@ func newCodec(id int32, level int) codec {
 }
 
 // append appends the compressed form of body to dst.
-func (c *codec) append(dst, body []byte) []byte {
+func (c *codec) append(dst, body []byte, p planes) []byte {
 	switch c.id {
 	case codecZstd:
+		if c.fastest {
+			if raw := p.incompressible(body); raw > 0 {
+				return c.appendFrame(dst, body, raw)
+			}
+		}
 		return c.zstd.EncodeAll(body, dst)
 	case codecSnappy:
 		at := len(dst)

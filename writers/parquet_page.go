@@ -66,8 +66,10 @@ type pageEncoder struct {
 	statistics bool // in the page header: for files without page indexes
 
 	body   []byte
+	bits   []byte
 	wide   []uint64
 	narrow []uint32
+	planes planes // of the body, if it is split
 	header parquetfoot.Encoder
 }
 
@@ -75,7 +77,7 @@ type pageEncoder struct {
 // begins there: some bytes before it are left over.
 func (e *pageEncoder) encode(dst []byte, c *newColumn, col *table.Column, rows int) (out []byte, from int, m pageMeta) {
 	m = pageMeta{rows: rows, lo: math.Inf(1), hi: math.Inf(-1)}
-	e.body = e.body[:0]
+	e.body, e.planes = e.body[:0], planes{}
 	switch c.physical {
 	case parquetfoot.Double:
 		e.doubles(&m, col.Float[:rows], c.encoding == encodingSplit)
@@ -88,7 +90,7 @@ func (e *pageEncoder) encode(dst []byte, c *newColumn, col *table.Column, rows i
 	}
 	at := len(dst) + headerRoom
 	dst = append(dst, make([]byte, headerRoom)...)
-	dst = e.codec.append(dst, e.body)
+	dst = e.codec.append(dst, e.body, e.planes)
 	e.writeHeader(c, &m, len(e.body), len(dst)-at)
 	from = at - len(e.header.B)
 	copy(dst[from:], e.header.B)
@@ -118,15 +120,14 @@ func (e *pageEncoder) writeHeader(c *newColumn, m *pageMeta, unpacked, stored in
 	h.End()
 }
 
-// levels appends the definition levels of a page, as RLE with its length: one
-// run if all cells are alike, else one run of single bits.
+// levels appends the definition levels of a page with their length, as runs:
+// a long run of cells that are alike is a count, the rest single bits.
 func (e *pageEncoder) levels(rows, nulls int, null func(row int) bool) {
 	e.body = append(e.body, 0, 0, 0, 0)
 	if nulls == 0 || nulls == rows {
-		e.body = binary.AppendUvarint(e.body, uint64(rows)<<1)
-		e.body = append(e.body, byte((rows-nulls)/max(rows, 1)))
+		e.body = appendRun(e.body, rows, nulls == 0)
 	} else {
-		e.body = binary.AppendUvarint(e.body, uint64(rows+7)/8<<1|1)
+		e.bits = e.bits[:0]
 		for row := 0; row < rows; row += 8 {
 			bits := byte(0)
 			for i := row; i < min(row+8, rows); i++ {
@@ -134,10 +135,50 @@ func (e *pageEncoder) levels(rows, nulls int, null func(row int) bool) {
 					bits |= 1 << (i - row)
 				}
 			}
-			e.body = append(e.body, bits)
+			e.bits = append(e.bits, bits)
 		}
+		e.body = appendRuns(e.body, e.bits, rows)
 	}
 	binary.LittleEndian.PutUint32(e.body, uint32(len(e.body)-4))
+}
+
+// appendRun appends n equal levels.
+func appendRun(b []byte, n int, present bool) []byte {
+	b = binary.AppendUvarint(b, uint64(n)<<1)
+	if present {
+		return append(b, 1)
+	}
+	return append(b, 0)
+}
+
+// shortestRun is how many bytes of equal bits are worth a run of their own.
+const shortestRun = 4
+
+// appendRuns appends levels given as bits, eight to a byte.
+func appendRuns(b, bits []byte, rows int) []byte {
+	single := 0 // bytes from here to at are not yet appended
+	flush := func(at int) {
+		if at > single {
+			b = binary.AppendUvarint(b, uint64(at-single)<<1|1)
+			b = append(b, bits[single:at]...)
+		}
+	}
+	for at := 0; at < len(bits); {
+		end := at + 1
+		if v := bits[at]; v == 0 || v == 0xff {
+			for end < len(bits) && bits[end] == v {
+				end++
+			}
+			if end-at >= shortestRun {
+				flush(at)
+				b = appendRun(b, min(8*end, rows)-8*at, v == 0xff)
+				single = end
+			}
+		}
+		at = end
+	}
+	flush(len(bits))
+	return b
 }
 
 // doubles appends levels and values of float64; NaN is null.
@@ -165,6 +206,7 @@ func (e *pageEncoder) doubles(m *pageMeta, v []float64, split bool) {
 	from := len(e.body)
 	e.body = grow(e.body, 8*len(e.wide))
 	if split {
+		e.planes = planes{from, len(e.wide)}
 		split8(e.body[from:], e.wide)
 		return
 	}
@@ -194,6 +236,7 @@ func (e *pageEncoder) floats(m *pageMeta, v []float64, split bool) {
 	from := len(e.body)
 	e.body = grow(e.body, 4*len(e.narrow))
 	if split {
+		e.planes = planes{from, len(e.narrow)}
 		split4(e.body[from:], e.narrow)
 		return
 	}
