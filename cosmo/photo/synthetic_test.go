@@ -96,7 +96,7 @@ func TestSyntheticOfBlackBody(t *testing.T) {
 
 // An SED as unkind as they come: breaks, unresolved lines, noise, a gap.
 func unkind(rng *rand.Rand) *Spectrum {
-	s := sampled("unkind", 1100, 11000, 4000, func(w float64) float64 {
+	s := sampled("unkind", 1100, 11000, 2500, func(w float64) float64 {
 		f := 1 + 0.5*rng.Float64()
 		if w < 4000 {
 			f *= 0.3

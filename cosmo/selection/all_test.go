@@ -111,6 +111,7 @@ func (s *survey) redshifts() {
 	frame.Directions(&s.u, s.ra, s.dec, s.st)
 	s.route.Apply(s.zf, s.zo, s.zin, s.scratch, &s.u)
 	frame.Ratios(s.obs, s.fr, s.zo, s.zf, s.zf)
+	frame.ModulusShifts(s.shift, s.obs, s.fr)
 }
 
 // distances: the base and what section 2 makes of it.
@@ -186,7 +187,7 @@ func (s *survey) selections() {
 		for i := range d.corrected {
 			d.corrected[i] = d.m[i] - d.ext[i]
 		}
-		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, FrameRatio: s.fr}, s.st)
+		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, Shift: s.shift}, s.st)
 	}
 	a, b := &s.bands[0], &s.bands[1]
 	Intersect(a.zlo, a.zhi, b.zlo, b.zhi)
@@ -246,8 +247,13 @@ func BenchmarkSurvey(b *testing.B) {
 		f    func()
 	}{
 		{"redshifts", s.redshifts}, {"distances", s.distances}, {"photometry", s.photometry}, {"errors", s.errors},
-		{"intervals", s.intervals}, {"selections", s.selections},
-		{"everything", func() {
+		{"intervals", s.intervals}, {"selections", s.selections}, {"selections, no bright limit", func() {
+			for j := range s.bands {
+				s.bands[j].sel.limits.Bright = math.Inf(-1)
+			}
+			s.selections()
+		}},
+		{"everything, no bright limit", func() {
 			s.redshifts()
 			s.distances()
 			s.photometry()

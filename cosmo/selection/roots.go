@@ -3,7 +3,6 @@ package selection
 import (
 	"math"
 
-	"catenrich/internal/exact"
 	"catenrich/internal/status"
 )
 
@@ -13,9 +12,12 @@ type Rows struct {
 	Apparent []float64 // m - A for limits on corrected magnitudes, m for observed ones
 	Offset   []float64 // mu + K + e of the row itself, D_L in Mpc, K the selection's own
 
-	ObsRatio   []float64 // (1+z_obs)/(1+z_cos); nil: 1
-	FrameRatio []float64 // (1+z_frame)/(1+z_cos); nil: 1
-	Template   []int32   // index of the row's K-correction, -1 for none; nil: the only one
+	// What frame.Ratios and frame.ModulusShifts make of the row's redshifts; both
+	// nil where z_obs = z_frame = z_cos.
+	ObsRatio []float64 // (1+z_obs)/(1+z_cos)
+	Shift    []float64 // 5 log10 of it and of (1+z_frame)/(1+z_cos), mag
+
+	Template []int32 // index of the row's K-correction, -1 for none; nil: the only one
 
 	Faint, Bright []float64 // limits of each row, in place of the selection's; may be nil
 }
@@ -88,12 +90,9 @@ func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
 	}
 	c := s.curves[t]
 	o = object{c: c, l: &s.limits, z: z, q: 1, lo: c.zlo, hi: c.zhi}
-	if r.ObsRatio != nil && r.ObsRatio[i] != 1 {
+	if r.ObsRatio != nil {
 		o.q = r.ObsRatio[i]
-	}
-	// 5 log10 of the ratios is in mu for every z alike.
-	if ratio := o.q * ratioOf(r.FrameRatio, i); ratio != 1 {
-		w -= float64(5 * exact.Log10(ratio))
+		w -= r.Shift[i] // in mu for every z alike
 	}
 	if o.q != 1 {
 		if k, same := c.k.Scale(o.q); same {
@@ -109,13 +108,6 @@ func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
 		return o, false
 	}
 	return o, true
-}
-
-func ratioOf(r []float64, i int) float64 {
-	if r == nil {
-		return 1
-	}
-	return r[i]
 }
 
 // outward finds zmax: from z up, the first place where w leaves [bright, faint].
@@ -232,22 +224,25 @@ func (o *object) root(p *piece, limit, from, end float64) float64 {
 
 // tabulated reads the root off the inverse, NaN where it cannot. Where K
 // depends on q, the difference that q makes to K is read at the root so far and
-// the root again without it. That difference is nearly proportional to 1+z,
-// which is put into the step, so that the second round is mostly the last.
+// the root again with it. That difference is nearly proportional to 1+z, which
+// is put into each step; steps shrink by a factor of some hundreds, and the last
+// is the one whose successor, by that factor, does not matter.
 func (o *object) tabulated(v *inverse, limit float64) float64 {
 	z, slope := v.at(limit)
 	if o.q == 1 {
 		return z
 	}
-	k, d := o.c.k, 0.0 // d: the difference so far
+	const nothing = 1e-11 // mag
+	k, d, before := o.c.k, 0.0, 1.0
 	for range 8 {
-		before := z
 		now := k.Value(float64(o.q*(1+z))-1) - k.Value(z)
 		growth := float64(now*slope) / (1 + z) // of the difference, by w
-		d = (now + float64(growth*d)) / (1 + growth)
-		if z, slope = v.at(limit - d); !(math.Abs(z-before) > rounding*z) {
-			return z // or NaN
+		step := (now - d) / (1 + growth)
+		d += step
+		if z, slope = v.at(limit - d); z != z || step*step <= nothing*before {
+			return z
 		}
+		before = math.Abs(step)
 	}
 	return math.NaN()
 }

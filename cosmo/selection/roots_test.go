@@ -66,7 +66,7 @@ func TestRoots(t *testing.T) {
 				name := fmt.Sprintf("%s, %s, moving %v", mname, kname, moving)
 				lim := Limits{Bright: 14, Faint: 20, Zmin: 0, Zmax: 5}
 				s := New(m, photo.Single(k), e, lim)
-				const n = 300
+				const n = 120
 				r := &Rows{Z: make([]float64, n), Apparent: make([]float64, n), Offset: make([]float64, n)}
 				q, frame := make([]float64, n), make([]float64, n)
 				for i := range n {
@@ -82,7 +82,10 @@ func TestRoots(t *testing.T) {
 					r.Offset[i] = w(m, k, e, r.Z[i], q[i], frame[i])
 				}
 				if moving {
-					r.ObsRatio, r.FrameRatio = q, frame
+					r.ObsRatio, r.Shift = q, make([]float64, n)
+					for i := range n {
+						r.Shift[i] = 5 * math.Log10(q[i]*frame[i])
+					}
 				}
 				zmin, zmax, st := make([]float64, n), make([]float64, n), make([]int32, n)
 				s.Roots(zmin, zmax, r, st)
@@ -131,7 +134,7 @@ func TestOwnMagnitudeIsOwnRoot(t *testing.T) {
 		for _, q := range []float64{1, 1.0012} {
 			for _, z := range []float64{1e-5, 0.003, 0.1, 0.7, 2.5} {
 				offset := w(m, k, photo.Evolution{}, z, q, 1.0005)
-				r := &Rows{Z: []float64{z}, Apparent: []float64{18.3}, Offset: []float64{offset}, ObsRatio: []float64{q}, FrameRatio: []float64{1.0005}}
+				r := &Rows{Z: []float64{z}, Apparent: []float64{18.3}, Offset: []float64{offset}, ObsRatio: []float64{q}, Shift: []float64{5 * math.Log10(q*1.0005)}}
 				zmin, zmax, st := []float64{0}, []float64{0}, []int32{0}
 				New(m, photo.Single(k), photo.Evolution{}, Limits{Bright: 18.3, Faint: 18.3, Zmax: 5}).Roots(zmin, zmax, r, st)
 				for _, root := range []float64{zmin[0], zmax[0]} {
@@ -198,12 +201,12 @@ func BenchmarkRoots(b *testing.B) {
 			b.Run(fmt.Sprintf("%s/q=%v", kname, q), func(b *testing.B) {
 				const n = 2048
 				s := New(m, photo.Single(k), photo.Evolution{Q: 1}, Limits{Bright: 14, Faint: 20, Zmax: 5})
-				r := &Rows{Z: make([]float64, n), Apparent: make([]float64, n), Offset: make([]float64, n), ObsRatio: make([]float64, n)}
+				r := &Rows{Z: make([]float64, n), Apparent: make([]float64, n), Offset: make([]float64, n), ObsRatio: make([]float64, n), Shift: make([]float64, n)}
 				rng := rand.New(rand.NewPCG(5, 8))
 				for i := range n {
 					r.Z[i] = math.Pow(10, -2+2*rng.Float64())
 					r.Apparent[i] = 16 + 4*rng.Float64()
-					r.ObsRatio[i] = q
+					r.ObsRatio[i], r.Shift[i] = q, 5*math.Log10(q)
 					r.Offset[i] = w(m, k, photo.Evolution{Q: 1}, r.Z[i], q, 1)
 				}
 				zmin, zmax, st := make([]float64, n), make([]float64, n), make([]int32, n)
