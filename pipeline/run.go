@@ -97,6 +97,7 @@ type runner struct {
 	scratch sync.Pool
 	batches sync.Pool
 	warned  sync.Once // of a filesystem without locks
+	swept   sync.Map  // directories whose abandoned temporaries were removed
 }
 
 func newRunner(p *Plan, o Options, watch Observer) *runner {

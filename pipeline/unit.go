@@ -60,10 +60,7 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 		return err
 	}
 	defer lock.Release()
-	if done, err := r.upToDate(u, o); done || err != nil {
-		return err // another run did it while this one waited
-	}
-	if err := publish.Sweep(r.options.FS, filepath.Dir(u.Output)); err != nil {
+	if done, err := r.finished(u, o); done || err != nil {
 		return err
 	}
 	release, err := publish.Begin(r.options.FS, u.Output, publish.Options{Replace: r.options.Replace})
@@ -107,15 +104,32 @@ func (r *runner) open(u *Unit) (table.Source, error) {
 	return u.in.Stream("standard input", r.options.Stdin, in)
 }
 
-// lock takes the lock of the unit's output.
-func (r *runner) lock(ctx context.Context, u *Unit) (*publish.Lock, error) {
-	root := filepath.Dir(u.Output)
-	for range strings.Count(u.ID, "/") {
-		if r.plan.Job.Directory != "" {
-			root = filepath.Dir(root)
+// finished ends what a crash interrupted, and reports whether nothing is left
+// to do: a pending publication was completed, or another run did the work while
+// this one waited for its lock.
+func (r *runner) finished(u *Unit, o *Outcome) (bool, error) {
+	dir := filepath.Dir(u.Output)
+	if _, swept := r.swept.LoadOrStore(dir, true); !swept {
+		if err := publish.Sweep(r.options.FS, dir); err != nil {
+			return false, err
 		}
 	}
-	lock, err := publish.Acquire(ctx, root, filepath.Base(u.Output), r.options.Wait)
+	if _, err := publish.Recover(r.options.FS, u.Output); err != nil {
+		return false, err
+	}
+	return r.upToDate(u, o)
+}
+
+// lock takes the lock of the unit's output: in the directory that all outputs
+// of the job share, under the output's path from there.
+func (r *runner) lock(ctx context.Context, u *Unit) (*publish.Lock, error) {
+	root, name := filepath.Dir(u.Output), filepath.Base(u.Output)
+	if r.plan.Job.Directory != "" {
+		for range strings.Count(u.ID, "/") {
+			root, name = filepath.Dir(root), filepath.Join(filepath.Base(root), name)
+		}
+	}
+	lock, err := publish.Acquire(ctx, root, name, r.options.Wait)
 	if err == nil && lock.Warning != nil {
 		r.warned.Do(func() { r.watch.Warn(lock.Warning.Error()) })
 	}
@@ -280,6 +294,9 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	}
 	if err := w.finishChecks(); err != nil {
 		return err
+	}
+	if counted, ok := w.src.(interface{ Rows() int64 }); ok && counted.Rows() != w.rows {
+		return fault.Internal.Errorf("internal error (please report it): %s says it has %d rows, and %d came out", w.unit.Name(), counted.Rows(), w.rows)
 	}
 	if err := w.sink.Finish(); err != nil {
 		return err

@@ -114,6 +114,9 @@ func (p *Parquet) ReadAt(b []byte, off int64) (int, error) {
 // Other, then what is in it, named with dots.
 func (p *Parquet) Schema() *table.Schema { return &p.schema }
 
+// Rows returns how many rows the footer says there are.
+func (p *Parquet) Rows() int64 { return p.footer.Rows }
+
 // Footer returns the file's footer, for the writer that extends it.
 func (p *Parquet) Footer() *parquetfoot.Footer { return p.footer }
 
