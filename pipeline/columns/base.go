@@ -2,6 +2,7 @@ package columns
 
 import (
 	"catenrich/cosmo"
+	"catenrich/cosmo/frame"
 	"catenrich/cosmo/spread"
 	"catenrich/internal/exact"
 	"catenrich/pipeline/job"
@@ -76,41 +77,20 @@ func (b *Base) begin(m *model) {
 // band is the band at hand.
 func (b *Base) band() *bandRows { return &b.Rows.bands[b.item] }
 
-// angular returns the angular diameter distance in Hubble distances:
-// D_M(z_cos) (1+z_frame)/[(1+z_cos)(1+z_obs)] (Davis et al. 2011).
+// angular returns the angular diameter distance in Hubble distances.
 func (b *Base) angular() []float64 {
 	v, filled := b.angularMemo.ask(len(b.Rows.ZModel))
-	if filled {
-		return v
-	}
-	dm := b.DM[:len(v)]
-	if factor := b.Rows.ToAngular; factor != nil {
-		for i := range v {
-			v[i] = dm[i] * factor[i]
-		}
-	} else {
-		divide(v, dm, b.X, 1)
+	if !filled {
+		frame.AngularDiameterDistances(v, b.DM, b.Rows.ZModel, b.Rows.ObsRatio, b.Rows.FrameRatio)
 	}
 	return v
 }
 
-// luminosity returns the luminosity distance in Hubble distances,
-// (1+z_obs)^2 D_A, which is (1+z) D_M where all redshifts are the same.
+// luminosity returns the luminosity distance in Hubble distances.
 func (b *Base) luminosity() []float64 {
 	v, filled := b.luminosityMemo.ask(len(b.Rows.ZModel))
-	if filled {
-		return v
-	}
-	if b.Rows.ToAngular != nil {
-		da, x := b.angular(), b.Rows.XObs[:len(v)]
-		for i := range v {
-			v[i] = x[i] * x[i] * da[i]
-		}
-	} else {
-		dm, x := b.DM[:len(v)], b.X[:len(v)]
-		for i := range v {
-			v[i] = x[i] * dm[i]
-		}
+	if !filled {
+		frame.LuminosityDistances(v, b.DM, b.Rows.ZModel, b.Rows.ObsRatio, b.Rows.FrameRatio)
 	}
 	return v
 }

@@ -3,7 +3,6 @@ package columns
 import (
 	"catenrich/cosmo"
 	"catenrich/cosmo/photo"
-	"catenrich/internal/exact"
 	"catenrich/pipeline/job"
 )
 
@@ -96,8 +95,8 @@ func absoluteDisplaced(b *Base, _, shift []float64) {
 	r := b.band()
 	for i := range shift {
 		shift[i] = r.apparent[i] - r.extinction[i]
-		if b.Rows.ToAngular != nil {
-			shift[i] -= float64(5 * exact.Log10(b.Rows.FrameRatio[i]*b.Rows.ObsRatio[i]))
+		if b.Rows.Shift != nil {
+			shift[i] -= b.Rows.Shift[i]
 		}
 	}
 }

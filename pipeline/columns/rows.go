@@ -19,17 +19,12 @@ type Rows struct {
 	ZObs   []float64 // as observed at the Sun
 	ZCos   []float64 // of the expansion alone
 	ZModel []float64 // the same, NaN where columns of the model are null
-	XObs   []float64 // 1+z_obs
 	Status []int32   // bits of the row so far
 
-	// ToAngular is (1+z_frame)/[(1+z_cos)(1+z_obs)], which turns the transverse
-	// comoving distance into the angular diameter distance; nil where all
-	// redshifts are the same and it is 1/(1+z).
-	ToAngular []float64
-
-	// ObsRatio is (1+z_obs)/(1+z_cos), FrameRatio (1+z_frame)/(1+z_cos); both
-	// are nil with ToAngular.
-	ObsRatio, FrameRatio []float64
+	// ObsRatio is (1+z_obs)/(1+z_cos), FrameRatio (1+z_frame)/(1+z_cos), Shift
+	// the magnitudes that they add to the distance modulus. All are nil where
+	// all redshifts are the same.
+	ObsRatio, FrameRatio, Shift []float64
 
 	Toward frame.Vectors // unit vectors, where a column or the frame needs them
 
@@ -44,14 +39,14 @@ type Rows struct {
 // rowBuffers are the memory of Rows. The redshifts of Rows are slices of it,
 // or of one another where they are the same.
 type rowBuffers struct {
-	zIn, zFrame, zObs, zCos, zModel, xObs []float64
-	toAngular, obsRatio, frameRatio       []float64
-	ra, dec, scratch, sigma               []float64
+	zIn, zFrame, zObs, zCos, zModel []float64
+	obsRatio, frameRatio, shift     []float64
+	ra, dec, scratch, sigma         []float64
 }
 
 func (b *rowBuffers) allocate() {
 	for _, buffer := range []*[]float64{
-		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.xObs, &b.toAngular, &b.obsRatio, &b.frameRatio, &b.ra, &b.dec, &b.scratch, &b.sigma,
+		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.obsRatio, &b.frameRatio, &b.shift, &b.ra, &b.dec, &b.scratch, &b.sigma,
 	} {
 		*buffer = make([]float64, span)
 	}
@@ -72,6 +67,7 @@ type redshifter struct {
 	peculiar     int // column of the peculiar velocity, or -1
 	position     position
 	directions   bool // some column needs unit vectors
+	shifts       bool // some column needs Rows.Shift
 	errors       errorInput
 	floor        float64 // scatter of peculiar velocities, km/s
 }
@@ -98,6 +94,7 @@ func newRedshifter(s *job.Settings, where func(job.Role) int, terms Term) (*reds
 	to, _ := frame.ParseFrame(s.Redshift.DistancesIn)
 	var err error
 	r.route, err = frame.NewRoute(from, to, r.position.ra >= 0)
+	r.shifts = terms&(selectionTerm|quantileTerm) != 0
 	r.directions = terms&directionTerm != 0 || r.route != nil && r.route.Positions()
 	return r, err
 }
@@ -111,7 +108,7 @@ func (z *redshifter) plain() bool {
 func (z *redshifter) fill(batch *table.Batch, r *Rows, lo, hi int) {
 	n := hi - lo
 	b := &r.buffers
-	r.ZIn, r.ZModel, r.XObs = b.zIn[:n], b.zModel[:n], b.xObs[:n]
+	r.ZIn, r.ZModel = b.zIn[:n], b.zModel[:n]
 	z.read(&batch.In[z.at], r, lo)
 	z.quality.apply(batch, r, lo)
 	frame.Valid(r.ZIn, z.low, z.high, r.Status)
@@ -119,7 +116,7 @@ func (z *redshifter) fill(batch *table.Batch, r *Rows, lo, hi int) {
 		z.position.fill(batch, r, lo, hi)
 	}
 	r.ZFrame, r.ZObs, r.ZCos = r.ZIn, r.ZIn, r.ZIn
-	r.ToAngular, r.ObsRatio, r.FrameRatio = nil, nil, nil
+	r.ObsRatio, r.FrameRatio, r.Shift = nil, nil, nil
 	if !z.plain() {
 		z.convert(batch, r, lo, hi)
 	}
@@ -168,18 +165,18 @@ func (z *redshifter) convert(batch *table.Batch, r *Rows, lo, hi int) {
 		r.ZCos = b.zCos[:n]
 		frame.Peculiar(r.ZCos, r.ZFrame, batch.In[z.peculiar].Float[lo:hi], r.Status)
 	}
-	r.ToAngular, r.ObsRatio, r.FrameRatio = b.toAngular[:n], b.obsRatio[:n], b.frameRatio[:n]
-	for i := range r.ToAngular {
-		cos, obs, of := 1+r.ZCos[i], 1+r.ZObs[i], 1+r.ZFrame[i]
-		r.FrameRatio[i], r.ObsRatio[i] = of/cos, obs/cos
-		r.ToAngular[i] = of / (cos * obs)
+	r.ObsRatio, r.FrameRatio = b.obsRatio[:n], b.frameRatio[:n]
+	frame.Ratios(r.ObsRatio, r.FrameRatio, r.ZObs, r.ZFrame, r.ZCos)
+	if z.shifts {
+		r.Shift = b.shift[:n]
+		frame.ModulusShifts(r.Shift, r.ObsRatio, r.FrameRatio)
 	}
 }
 
 // model decides which rows have columns of the model.
 func (z *redshifter) model(r *Rows) {
 	for i, v := range r.ZCos {
-		r.ZModel[i], r.XObs[i] = v, 1+r.ZObs[i]
+		r.ZModel[i] = v
 		if v > 0 && v <= cosmo.MaxRedshift || v != v {
 			continue
 		}

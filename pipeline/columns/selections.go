@@ -178,7 +178,7 @@ func (b *Base) limitRoots(s *selectionRows, i int, zMin, zMax []float64) {
 	l.apparent, l.offset = l.apparent[:n], l.offset[:n]
 	k := band.k
 	rows := selection.Rows{
-		Z: r.ZModel, Apparent: l.apparent, Offset: l.offset, ObsRatio: r.ObsRatio, FrameRatio: r.FrameRatio,
+		Z: r.ZModel, Apparent: l.apparent, Offset: l.offset, ObsRatio: r.ObsRatio, Shift: r.Shift,
 		Template: band.template, Faint: l.faintRows, Bright: l.brightRows,
 	}
 	if l.k != nil {

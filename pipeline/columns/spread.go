@@ -7,7 +7,6 @@ import (
 	"catenrich/cosmo/frame"
 	"catenrich/cosmo/photo"
 	"catenrich/cosmo/spread"
-	"catenrich/internal/exact"
 	"catenrich/internal/status"
 	"catenrich/internal/table"
 	"catenrich/pipeline/job"
@@ -104,7 +103,7 @@ func luminosityDisplaced(b *Base, scale, _ []float64) {
 // modulusDisplaced is what frames do to a distance modulus.
 func modulusDisplaced(b *Base, _, shift []float64) {
 	for i := range shift {
-		shift[i] = float64(5 * exact.Log10(b.Rows.FrameRatio[i]*b.Rows.ObsRatio[i]))
+		shift[i] = b.Rows.Shift[i]
 	}
 }
 
@@ -282,19 +281,12 @@ func (z *redshifter) models(v float64) bool {
 // moveTo makes r the rows of o with other redshifts as given.
 func (r *Rows) moveTo(o *Rows, z []float64) {
 	n, b := len(z), &r.buffers
-	r.ZIn, r.ZModel, r.XObs, r.ZObs = z, b.zModel[:n], b.xObs[:n], b.zObs[:n]
+	r.ZIn, r.ZModel, r.ZObs = z, b.zModel[:n], b.zObs[:n]
 	r.ZCos, r.ZFrame = r.ZModel, r.ZModel
-	r.Status, r.Toward, r.ObsRatio, r.FrameRatio, r.ToAngular = o.Status, o.Toward, o.ObsRatio, o.FrameRatio, nil
+	r.Status, r.Toward, r.ObsRatio, r.FrameRatio, r.Shift = o.Status, o.Toward, o.ObsRatio, o.FrameRatio, o.Shift
 	for i, v := range z {
 		r.ZModel[i] = o.cosAt(i, v)
 		r.ZObs[i] = o.ZObs[i] + float64((v-o.ZIn[i])*((1+o.ZObs[i])/(1+o.ZIn[i])))
-		r.XObs[i] = 1 + r.ZObs[i]
-	}
-	if o.ToAngular != nil {
-		r.ToAngular = b.toAngular[:n]
-		for i := range r.ToAngular {
-			r.ToAngular[i] = o.FrameRatio[i] / r.XObs[i]
-		}
 	}
 	for i := range r.bands {
 		r.bands[i].moveTo(r, &o.bands[i])
@@ -309,7 +301,7 @@ func (s *Scratch) interval(o output, m *model, out []float64) {
 		base.item = o.item
 		o.entry.Eval(base, s.ends[i][:n])
 	}
-	if o.entry.Spread.Displace != nil && (s.rows.ToAngular != nil || o.entry.Family == PerBand) {
+	if o.entry.Spread.Displace != nil && (s.rows.ObsRatio != nil || o.entry.Family == PerBand) {
 		v.Scale, v.Shift = s.ends[3][:n], s.ends[4][:n]
 		for i := range v.Scale {
 			v.Scale[i], v.Shift[i] = 1, 0
@@ -328,7 +320,7 @@ func (s *Scratch) interval(o output, m *model, out []float64) {
 // findTurns finds where a column of a model turns, at rest.
 func (k *Kernel) findTurns(m *model, o output) spread.Turns {
 	var rows Rows
-	rows.ZModel, rows.XObs = make([]float64, 1), make([]float64, 1)
+	rows.ZModel = make([]float64, 1)
 	rows.ZIn, rows.ZCos, rows.ZObs, rows.ZFrame = rows.ZModel, rows.ZModel, rows.ZModel, rows.ZModel
 	rows.Status = make([]int32, 1)
 	for i := range k.job.Bands {
@@ -342,7 +334,7 @@ func (k *Kernel) findTurns(m *model, o output) spread.Turns {
 		low = cosmo.MinRedshift
 	}
 	return spread.FindTurns(func(z float64) float64 {
-		rows.ZModel[0], rows.XObs[0] = z, 1+z
+		rows.ZModel[0] = z
 		for i := range rows.bands {
 			rows.bands[i].rest(z)
 		}
