@@ -178,10 +178,10 @@ func (s *survey) measureLight(t *truth, r *record) {
 	var sigma [bands]float64
 	var m [bands]float64
 	for b := range bands {
-		t.extinction[b] = extinctionPerEBV[b] * t.ebv
+		t.extinction[b] = float64(extinctionPerEBV[b] * t.ebv)
 		m[b] = t.corrected[b] + t.extinction[b]
 		faint := t.field.noise * exact.Exp10(0.3*(m[b]-t.field.depth))
-		sigma[b] = round(math.Sqrt(0.015*0.015+float64(faint*faint)), 4)
+		sigma[b] = round(math.Sqrt(square(0.015)+square(faint)), 4)
 	}
 	r[colMagG], r[colMagErrG] = number(round(m[bandG]+float64(sigma[bandG]*d.gauss()), 4)), number(sigma[bandG])
 	r[colMagR], r[colMagErrR] = number(round(m[bandR]+float64(sigma[bandR]*d.gauss()), 4)), number(sigma[bandR])
@@ -193,7 +193,7 @@ func (s *survey) measureLight(t *truth, r *record) {
 	r[colIvarI] = number(ivar)
 }
 
-func square(x float64) float64 { return x * x }
+func square(x float64) float64 { return float64(x * x) }
 
 // significant rounds x to a number of decimal digits.
 func significant(x float64, digits int) float64 {

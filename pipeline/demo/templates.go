@@ -52,16 +52,16 @@ const (
 	evolutionZero = 0.1
 )
 
-func evolution(z float64) float64 { return -evolutionQ * (z - evolutionZero) }
+func evolution(z float64) float64 { return float64(-evolutionQ * (z - evolutionZero)) }
 
 // color returns M_g - M_r of a power law: the bands are at 4770 and 6230
 // Angstrom (round, invented numbers).
-func (t *template) color() float64 { return 2.5 * t.alpha * exact.Log10(4770.0/6230) }
+func (t *template) color() float64 { return float64(2.5 * t.alpha * exact.Log10(4770.0/6230)) }
 
 // powerLawK returns the K-correction of f_nu ~ nu^alpha, mag (Hogg et al. 2002,
 // arXiv:astro-ph/0210394).
 func (t *template) powerLawK(z float64) float64 {
-	return -2.5 * (1 + t.alpha) * exact.Log10(1+z)
+	return float64(-2.5 * (1 + t.alpha) * exact.Log10(1+z))
 }
 
 // oldStars is the spectrum of every galaxy in i, f_lambda at lambda in
