@@ -62,7 +62,8 @@ const (
 	goodEnough = 2e-7 // mag
 	atWorst    = 2e-5 // mag, where goodEnough takes too many pieces
 	manyPieces = 16
-	maxPieces  = 1024
+	maxPieces  = 8192
+	maxTotal   = 1 << 18 // 8 MB
 
 	// faintest is a K beyond which the SED has, to say it plainly, no flux in
 	// the band: the range ends there.
@@ -227,7 +228,7 @@ func (k *Synthetic) tabulate(s *synthesis, from, to float64, pieces int) error {
 			k.cells = append(k.cells, kCell{from, float64(n) / (to - from), int32(off), int32(n)})
 			return nil
 		}
-		if n >= maxPieces {
+		if n >= maxPieces || off+2*n > maxTotal {
 			return fault.Config.Errorf("%s: the K-correction through %s changes too fast near z = %.4g to be tabulated to %g mag: smooth the SED, or give a finer bandpass",
 				s.SED.Name, s.Band.Name, from-1, float64(atWorst))
 		}
