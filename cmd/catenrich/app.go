@@ -25,7 +25,7 @@ type app struct {
 
 // run is the program without the process: it returns the exit code.
 func run(args []string, stdin io.ReadCloser, stdout, stderr io.Writer) int {
-	a := &app{stdin: stdin, stdout: stdout, stderr: stderr}
+	a := &app{stdin: newInterruptible(stdin), stdout: stdout, stderr: stderr}
 	ctx, stop := a.untilSignal()
 	defer stop()
 	root := a.root()
