@@ -67,7 +67,7 @@ type pageEncoder struct {
 
 	body   []byte
 	bits   []byte
-	wide   []uint64
+	wide   []float64 // the values of a column with nulls
 	narrow []uint32
 	planes planes // of the body, if it is split
 	header parquetfoot.Encoder
@@ -197,21 +197,24 @@ func (e *pageEncoder) doubles(m *pageMeta, v []float64, split bool) {
 	}
 	m.lo, m.hi, m.nulls = lo, hi, nulls
 	e.levels(len(v), nulls, func(row int) bool { return v[row] != v[row] })
-	e.wide = e.wide[:0]
-	for _, x := range v {
-		if x == x {
-			e.wide = append(e.wide, math.Float64bits(x))
+	if nulls > 0 {
+		e.wide = e.wide[:0]
+		for _, x := range v {
+			if x == x {
+				e.wide = append(e.wide, x)
+			}
 		}
+		v = e.wide
 	}
 	from := len(e.body)
-	e.body = grow(e.body, 8*len(e.wide))
+	e.body = grow(e.body, 8*len(v))
 	if split {
-		e.planes = planes{from, len(e.wide)}
-		split8(e.body[from:], e.wide)
+		e.planes = planes{from, len(v)}
+		split8(e.body[from:], v)
 		return
 	}
-	for i, x := range e.wide {
-		binary.LittleEndian.PutUint64(e.body[from+8*i:], x)
+	for i, x := range v {
+		binary.LittleEndian.PutUint64(e.body[from+8*i:], math.Float64bits(x))
 	}
 }
 

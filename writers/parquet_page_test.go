@@ -13,9 +13,9 @@ import (
 func TestSplitAgainstDefinition(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 2))
 	for _, n := range []int{0, 1, 7, 8, 9, 64, 1001} {
-		wide, narrow := make([]uint64, n), make([]uint32, n)
+		wide, narrow := make([]float64, n), make([]uint32, n)
 		for i := range n {
-			wide[i], narrow[i] = r.Uint64(), r.Uint32()
+			wide[i], narrow[i] = math.Float64frombits(r.Uint64()), r.Uint32()
 		}
 		a, b := make([]byte, 8*n), make([]byte, 4*n)
 		split8(a, wide)
@@ -24,7 +24,7 @@ func TestSplitAgainstDefinition(t *testing.T) {
 		// of value i stands at k n + i.
 		for i := range n {
 			for k := range 8 {
-				if a[k*n+i] != byte(wide[i]>>(8*k)) {
+				if a[k*n+i] != byte(math.Float64bits(wide[i])>>(8*k)) {
 					t.Fatalf("n %d, value %d, byte %d", n, i, k)
 				}
 			}

@@ -1,20 +1,23 @@
 package writers
 
-import "encoding/binary"
+import (
+	"encoding/binary"
+	"math"
+)
 
 // split8 stores values as BYTE_STREAM_SPLIT: the first bytes of all of them,
 // then the second bytes, and so on, in little-endian order. dst has 8 bytes
 // for each value. Eight values at a time are an 8 by 8 matrix of bytes, which
 // three rounds of swaps transpose: halves, quarters, single bytes.
-func split8(dst []byte, v []uint64) {
+func split8(dst []byte, v []float64) {
 	n := len(v)
 	i := 0
 	for ; i+8 <= n; i += 8 {
-		x := (*[8]uint64)(v[i:])
-		a0, a4 := swap(x[0], x[4], 32, 0x00000000ffffffff)
-		a1, a5 := swap(x[1], x[5], 32, 0x00000000ffffffff)
-		a2, a6 := swap(x[2], x[6], 32, 0x00000000ffffffff)
-		a3, a7 := swap(x[3], x[7], 32, 0x00000000ffffffff)
+		x := (*[8]float64)(v[i:])
+		a0, a4 := swap(math.Float64bits(x[0]), math.Float64bits(x[4]), 32, 0x00000000ffffffff)
+		a1, a5 := swap(math.Float64bits(x[1]), math.Float64bits(x[5]), 32, 0x00000000ffffffff)
+		a2, a6 := swap(math.Float64bits(x[2]), math.Float64bits(x[6]), 32, 0x00000000ffffffff)
+		a3, a7 := swap(math.Float64bits(x[3]), math.Float64bits(x[7]), 32, 0x00000000ffffffff)
 		a0, a2 = swap(a0, a2, 16, 0x0000ffff0000ffff)
 		a1, a3 = swap(a1, a3, 16, 0x0000ffff0000ffff)
 		a4, a6 = swap(a4, a6, 16, 0x0000ffff0000ffff)
@@ -34,7 +37,7 @@ func split8(dst []byte, v []uint64) {
 	}
 	for ; i < n; i++ {
 		for plane := range 8 {
-			dst[plane*n+i] = byte(v[i] >> (8 * plane))
+			dst[plane*n+i] = byte(math.Float64bits(v[i]) >> (8 * plane))
 		}
 	}
 }

@@ -12,8 +12,8 @@ import "encoding/binary"
 type planes struct{ from, size int }
 
 const (
-	sampleSize = 2048 // bytes, twice for each plane
-	minPlane   = 2 * sampleSize
+	sampleSize = 512 // bytes, twice for each plane
+	minPlane   = 4096
 )
 
 // incompressible returns how many bytes at the start of body are to be stored
@@ -59,11 +59,11 @@ func compressible(plane []byte) bool {
 
 // repeats counts the positions of a sample whose four bytes came before.
 func repeats(sample []byte) int {
-	var seen [1024]uint16 // position+1, by hash
+	var seen [512]uint16 // position+1, by hash
 	n := 0
 	for i := 0; i+4 <= len(sample); i++ {
 		v := binary.LittleEndian.Uint32(sample[i:])
-		h := v * 2654435761 >> 22
+		h := v * 2654435761 >> 23
 		if at := int(seen[h]) - 1; at >= 0 && binary.LittleEndian.Uint32(sample[at:]) == v {
 			n++
 		}
