@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"fmt"
 	"io"
+	"slices"
 	"strings"
 	"text/tabwriter"
 
@@ -59,18 +60,35 @@ type columnRow struct {
 	UCD         string `json:"ucd"`
 	Description string `json:"description"`
 	Source      string `json:"source"`
+	Error       bool   `json:"error"`    // <name>_error can be had
+	Interval    bool   `json:"interval"` // <name>_lo and <name>_hi can be had
 }
 
 func columnRows(like string) []columnRow {
 	var rows []columnRow
 	like = strings.ToLower(like)
 	for _, e := range append(columns.All(), columns.Status()) {
-		row := columnRow{e.Pattern(), e.Group, e.Unit.VOUnit("Mpc"), e.UCD, e.Doc, e.From}
+		row := columnRow{e.Pattern(), e.Group, e.Unit.VOUnit("Mpc"), e.UCD, e.Doc, e.From, e.Spread.Error != nil, e.Spread.Interval}
 		if strings.Contains(strings.ToLower(row.Name+" "+row.Group+" "+row.Description), like) {
 			rows = append(rows, row)
 		}
 	}
+	order := append(columns.Groups(), columns.Status().Group)
+	slices.SortStableFunc(rows, func(a, b columnRow) int {
+		return slices.Index(order, a.Group) - slices.Index(order, b.Group)
+	})
 	return rows
+}
+
+// spreads marks the columns that have an error or an interval.
+func (r *columnRow) spreads() string {
+	switch {
+	case r.Error && r.Interval:
+		return "e i"
+	case r.Error:
+		return "e"
+	}
+	return ""
 }
 
 func textColumns(w io.Writer, rows []columnRow) error {
@@ -85,15 +103,17 @@ func textColumns(w io.Writer, rows []columnRow) error {
 		if unit == "" {
 			unit = "-"
 		}
-		fmt.Fprintf(t, "  %s\t%s\t%s\n", r.Name, unit, r.Description)
+		fmt.Fprintf(t, "  %s\t%s\t%s\t%s\n", r.Name, unit, r.spreads(), r.Description)
 	}
+	fmt.Fprintf(t, "\ne: <name>_error can be added too; i: <name>_lo and <name>_hi\n")
+	fmt.Fprintf(t, "groups: %s\n", strings.Join(columns.Groups(), ", "))
 	return t.Flush()
 }
 
 func markdownColumns(w io.Writer, rows []columnRow) error {
-	fmt.Fprintln(w, "| column | group | unit | what it is | source |\n|---|---|---|---|---|")
+	fmt.Fprintln(w, "| column | group | unit | | what it is | source |\n|---|---|---|---|---|---|")
 	for _, r := range rows {
-		if _, err := fmt.Fprintf(w, "| `%s` | %s | %s | %s | %s |\n", r.Name, r.Group, r.Unit, r.Description, r.Source); err != nil {
+		if _, err := fmt.Fprintf(w, "| `%s` | %s | %s | %s | %s | %s |\n", r.Name, r.Group, r.Unit, r.spreads(), r.Description, r.Source); err != nil {
 			return err
 		}
 	}
