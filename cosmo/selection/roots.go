@@ -232,12 +232,12 @@ func (o *object) tabulated(v *inverse, limit float64) float64 {
 	if o.q == 1 {
 		return z
 	}
-	const nothing = 1e-11 // mag
+	const nothing = sure / 2 // mag
 	k, d, before := o.c.k, 0.0, 1.0
 	for range 8 {
+		growth := slope / (1 + z) // of the difference, in parts of it, by w
 		now := k.Value(float64(o.q*(1+z))-1) - k.Value(z)
-		growth := float64(now*slope) / (1 + z) // of the difference, by w
-		step := (now - d) / (1 + growth)
+		step := float64((now - d) * (1 - float64(now*growth))) // 1/(1+x), x of a few 1e-3
 		d += step
 		if z, slope = v.at(limit - d); z != z || step*step <= nothing*before {
 			return z
