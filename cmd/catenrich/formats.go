@@ -43,6 +43,19 @@ func formats() pipeline.Formats {
 				},
 			},
 		},
+		{
+			Name:     "fits",
+			Suffixes: []string{".fits", ".fit", ".fits.gz", ".fit.gz"},
+			Open: func(path string, in *job.InputSettings) (table.Source, error) {
+				return readers.OpenFITS(path, readers.FITSOptions{HDU: in.HDU})
+			},
+			Sinks: map[string]func(table.Source, string, table.Spec) (table.Sink, error){
+				"fits": func(src table.Source, path string, spec table.Spec) (table.Sink, error) {
+					spec.Codec = textCodec(path)
+					return writers.NewFITS(src.(*readers.FITS), spec)
+				},
+			},
+		},
 	}
 }
 

@@ -83,6 +83,10 @@ var settings = []setting{
 	{"length-unit", "", "add.length_unit", "UNIT", "Mpc (default), Gpc, Glyr or Mpc/h", text(func(f *job.File) *string { return &f.Add.LengthUnit })},
 	{"prefix", "", "add.prefix", "TEXT", "put before every added name", text(func(f *job.File) *string { return &f.Add.Prefix })},
 	{"format", "", "input.format", "NAME", "format of the input, where its suffix does not tell", text(func(f *job.File) *string { return &f.Input.Format })},
+	{"hdu", "", "input.hdu", "TABLE", "FITS: number (0 is the primary header) or EXTNAME of the table (default: the first)", func(f *job.File, value string) error {
+		f.Input.HDU = value
+		return nil
+	}},
 	{"delimiter", "", "input.csv.delimiter", "CHAR", `"," (default), "\t" (default for .tsv), ";", "|" or " " (space-aligned)`, text(func(f *job.File) *string { return &f.Input.CSV.Delimiter })},
 	{"quote", "", "input.csv.quote", "CHAR", `"\"" (default) or none`, text(func(f *job.File) *string { return &f.Input.CSV.Quote })},
 	{"comment", "", "input.csv.comment", "TEXT", "start of lines that are no rows", text(func(f *job.File) *string { return &f.Input.CSV.Comment })},

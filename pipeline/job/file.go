@@ -35,6 +35,7 @@ type File struct {
 type Input struct {
 	Files  []string `toml:"files"`            // patterns; ** crosses directories
 	Format string   `toml:"format,omitempty"` // where the suffix does not tell
+	HDU    any      `toml:"hdu,omitempty"`    // of FITS: the table's number, 0 being the primary header, or its EXTNAME
 	CSV    CSV      `toml:"csv,omitempty"`
 }
 

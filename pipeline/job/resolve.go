@@ -7,6 +7,8 @@ import (
 	"path/filepath"
 	"slices"
 	"sort"
+	"strconv"
+	"strings"
 
 	"catenrich/cosmo"
 	"catenrich/cosmo/frame"
@@ -142,6 +144,7 @@ func (r *resolver) places() {
 func (r *resolver) input(s *InputSettings) {
 	in := &r.file.Input
 	s.Format = r.choice("input.format", in.Format, "", Formats...)
+	s.HDU = r.hdu(in.HDU)
 	s.Delimiter = r.delimiter("input.csv.delimiter", in.CSV.Delimiter)
 	s.HeaderDelimiter = r.delimiter("input.csv.header_delimiter", in.CSV.HeaderDelimiter)
 	s.Quote = r.choice("input.csv.quote", in.CSV.Quote, `"`, `"`, "none")
@@ -169,7 +172,25 @@ func (r *resolver) input(s *InputSettings) {
 }
 
 // Formats are the names of the file formats that a job may ask for.
-var Formats = []string{"csv", "parquet"}
+var Formats = []string{"csv", "parquet", "fits"}
+
+// hdu accepts a number or a name; a name of digits is a number too.
+func (r *resolver) hdu(value any) string {
+	switch v := value.(type) {
+	case nil:
+		return ""
+	case int64:
+		if v >= 0 {
+			return strconv.FormatInt(v, 10)
+		}
+	case string:
+		if name := strings.TrimSpace(v); name != "" && !strings.HasPrefix(name, "-") {
+			return name
+		}
+	}
+	r.fail("input.hdu", "is %v, want the number of a table (0 is the primary header) or its EXTNAME", value)
+	return ""
+}
 
 // delimiter accepts the one-byte delimiters that text tables use; "" leaves
 // the choice to the suffix.

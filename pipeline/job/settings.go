@@ -71,6 +71,7 @@ type InputSettings struct {
 	Header          string   `json:"header"` // "line", "none" or "commented"
 	HeaderDelimiter string   `json:"headerDelimiter"`
 	Names           []string `json:"names"`
+	HDU             string   `json:"hdu"` // number or EXTNAME; "" is the first table
 }
 
 // OutputSettings is how the output is written. An empty string means "as the
