@@ -21,8 +21,7 @@ const (
 	leastBits   = 5  // cells in an octave: 2^5 ...
 	mostBits    = 11 // ... to 2^11
 
-	mantissa = 52
-	exponent = 1<<11 - 1
+	mantissa = 52 // bits
 )
 
 // A polynomial is a quantity in one cell: p[0] + p[1] t + ... + p[7] t^7.
@@ -58,19 +57,14 @@ type tables struct {
 	octaves [octaves]octave
 	cells   []span
 
-	distance, time, rate []polynomial       // D_C, lookback, E
-	age                  []float64          // at the cell's edge nearest z = 0
-	nodes                []([order]float64) // E at the nodes
-
-	scalars func() pastScalars
+	distance, time, rate []polynomial     // D_C, lookback, E
+	age                  []float64        // at the cell's edge nearest z = 0
+	nodes                [][order]float64 // E at the nodes
 
 	once struct{ base, transverse, slope, volume, drift sync.Once }
 
 	transverse, slope, volume, drift []polynomial
 }
-
-// pastTables is the tables of a Model.
-type pastTables = tables
 
 // A span is where a cell lies: from edge (nearest z = 0) over width, which is
 // negative for z < 0.

@@ -105,11 +105,11 @@ type lostWalk struct {
 	x, g   float64 // where the walk stands: G(x) = g
 	time   float64 // from today until then
 	anchor float64 // time when it was last found without walking; 0 before the first
-	gentle bool    // x is no steep power of g: walking is right
+	gentle bool    // x is no steep power of g, as it is for soft dark energy: such rows are solved one by one
 }
 
 func (m *Model) newLostWalk() *lostWalk {
-	w := &lostWalk{m: m, grid: m.future.grid(), now: m.past.scalars().age, lowest: -0.985, gentle: m.e.wa3 != 0 || m.e.power <= 1}
+	w := &lostWalk{m: m, grid: m.future.grid(), now: m.scalars().age, lowest: -0.985, gentle: m.e.power <= 1 || m.e.wa3 > 0.03}
 	for i := -firstOctave - 1; i >= 0; i-- {
 		if m.past.octaves[i].slow {
 			near, _ := octaveEnds(i)
@@ -128,10 +128,13 @@ func (w *lostWalk) age(z float64) float64 {
 		w.guess = w.m.invertDistance(g-w.grid.total, w.lowest, z, w.guess)
 		return w.m.value(Age, w.guess)
 	}
-	if w.gentle && w.anchor != 0 {
+	if !w.gentle {
+		return math.NaN() // no cells here
+	}
+	if w.anchor != 0 {
 		w.step(g)
 	}
-	if !w.gentle || !(w.time > 0.25*w.anchor) { // rounding errors of the steps would show
+	if !(w.time > 0.25*w.anchor) { // rounding errors of the steps would show
 		u, time := w.grid.solve(w.m, g)
 		w.x, w.g, w.time, w.anchor = exact.Exp(u), g, time, time
 	}

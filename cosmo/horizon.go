@@ -131,7 +131,7 @@ func (m *Model) slowContactLost(z float64) float64 {
 		return m.At(Age, m.invertDistance(g-h.total, 0, z, 0.5*z))
 	}
 	_, time := h.solve(m, g)
-	if age := m.past.scalars().age + time; age <= math.MaxFloat64 {
+	if age := m.scalars().age + time; age <= math.MaxFloat64 {
 		return age
 	}
 	return math.NaN()

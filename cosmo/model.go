@@ -27,8 +27,9 @@ type Model struct {
 	bounded    bool    // the particle horizon is finite
 	horizon    bool    // there is an event horizon
 
-	past    pastTables
+	past    tables
 	future  futureTable
+	scalars func() pastScalars
 	special func() specialRedshifts
 }
 
@@ -155,7 +156,7 @@ func (m *Model) polishTurn(x float64) float64 {
 // prepareLazily sets up what is computed when first asked for.
 func (m *Model) prepareLazily() {
 	m.special = sync.OnceValue(m.findSpecial)
-	m.past.scalars = sync.OnceValue(m.findPast)
+	m.scalars = sync.OnceValue(m.findPast)
 	m.future.grid = sync.OnceValue(m.buildHorizonGrid)
 }
 

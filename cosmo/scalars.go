@@ -32,12 +32,12 @@ func (m *Model) ageFrom(u float64) float64 {
 
 // Age returns the time since the big bang in Gyr; +Inf where it diverges.
 // Source: Hogg 1999, eq. 30 at z = 0.
-func (m *Model) Age() float64 { return float64(m.hubbleTime * m.past.scalars().age) }
+func (m *Model) Age() float64 { return float64(m.hubbleTime * m.scalars().age) }
 
 // ParticleHorizon returns the distance today, in Mpc, of the farthest matter
 // whose light can have reached us; +Inf where it diverges.
 // Source: Davis & Lineweaver 2004, PASA 21, 97, eq. 27.
-func (m *Model) ParticleHorizon() float64 { return float64(m.hubbleDistance * m.past.scalars().particle) }
+func (m *Model) ParticleHorizon() float64 { return float64(m.hubbleDistance * m.scalars().particle) }
 
 // EventHorizon returns the distance today, in Mpc, beyond which no signal sent
 // now from here ever arrives; +Inf where there is no such distance, as in a

@@ -69,5 +69,5 @@ func (m *Model) slowAge(z float64) float64 {
 	case z >= 0:
 		return m.ageFrom(exact.Log1p(z))
 	}
-	return m.past.scalars().age - m.slowTime(0, z)
+	return m.scalars().age - m.slowTime(0, z)
 }
