@@ -124,7 +124,7 @@ func (p *angle) add(digits []byte) bool {
 		}
 		p.whole = int(whole)
 	case 1:
-		p.minutes, p.secs = int(whole), (v-whole)*60
+		p.minutes, p.secs = int(whole), float64((v-whole)*60)
 	case 2:
 		p.secs = v
 	}

@@ -110,7 +110,7 @@ func (c *curve) findPieces() {
 func (c *curve) turn(a, b float64, maximum bool, q float64) float64 {
 	const golden = 0.6180339887498949
 	better := func(u, v float64) bool { return (u > v) == maximum && u != v }
-	x1, x2 := b-golden*(b-a), a+float64(golden*(b-a))
+	x1, x2 := b-float64(golden*(b-a)), a+float64(golden*(b-a))
 	w1, w2 := c.at(x1, q), c.at(x2, q)
 	for range 60 {
 		if better(w1, w2) {

@@ -174,7 +174,7 @@ func (o *object) limit(v *way) float64 {
 // undecided reports whether the limit is so close to w at rest that w of an
 // object with another q has to be computed.
 func (o *object) undecided(v *way) bool {
-	return o.q != 1 && math.Abs(o.limit(v)-v.w) <= 2*o.c.steep*math.Abs(o.q-1)+1e-9
+	return o.q != 1 && math.Abs(o.limit(v)-v.w) <= float64(2*o.c.steep*math.Abs(o.q-1))+1e-9
 }
 
 // endAt ends a way at the end of what is known.
@@ -192,7 +192,7 @@ func (o *object) turnNear(v *way) {
 	if !o.undecided(v) {
 		return
 	}
-	d := 2 * math.Abs(o.q-1) * (1 + v.end)
+	d := float64(2 * math.Abs(o.q-1) * (1 + v.end))
 	v.end = o.c.turn(max(v.end-d, o.lo), min(v.end+d, o.hi), v.fainter, o.q)
 	v.w = o.c.at(v.end, o.q)
 }
