@@ -181,8 +181,8 @@ func (j *graftJob) pump(src table.Source, sink table.Sink, wants []table.Want) e
 var added = []table.Field{
 	{Name: "twice", Kind: table.Float, Unit: "Mpc", UCD: "pos.distance", Description: "twice the first column, null where it is"},
 	{Name: "noise", Kind: table.Float},
-	{Name: "flag", Kind: table.Flag},
-	{Name: "state", Kind: table.Int},
+	{Name: "new_flag", Kind: table.Flag},
+	{Name: "new_state", Kind: table.Int},
 }
 
 // noise is a number for a row that no compression foresees.

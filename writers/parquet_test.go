@@ -291,7 +291,7 @@ func arrowColumns(t *testing.T, rows int) *file.Reader {
 	optional := parquet.Repetitions.Optional
 	root := schema.MustGroup(schema.NewGroupNode("schema", parquet.Repetitions.Required, schema.FieldList{
 		schema.NewFloat64Node("twice", optional, -1), schema.NewFloat64Node("noise", optional, -1),
-		schema.NewBooleanNode("flag", optional, -1), schema.NewInt32Node("state", optional, -1)}, -1))
+		schema.NewBooleanNode("new_flag", optional, -1), schema.NewInt32Node("new_state", optional, -1)}, -1))
 	var buf bytes.Buffer
 	w := file.NewParquetWriter(&buf, root, file.WithWriterProps(parquet.NewWriterProperties(
 		parquet.WithCompression(compress.Codecs.Zstd), parquet.WithDictionaryDefault(false), parquet.WithPageIndexEnabled(true))))
