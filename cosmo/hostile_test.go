@@ -9,6 +9,9 @@ import (
 // Any finite numbers are either refused or served: no panic, no hang.
 func TestHostileParams(t *testing.T) {
 	size := []float64{-1e300, -40, 0, 1e-300, 0.3, 50, 1e300}
+	if testing.Short() {
+		size = []float64{-40, 0, 0.3, 1e300}
+	}
 	z := []float64{-0.98, -1e-300, 5e-324, 1e-9, 0.5, 1e4}
 	start, accepted := time.Now(), 0
 	try := func(p Params) {
