@@ -54,3 +54,39 @@ func TestMatrix(t *testing.T) {
 		t.Logf("%s read %d outputs of %d files; %d not asked", j.name, read[j.name], len(files), skipped[j.name])
 	}
 }
+
+// TestGraftOntoGraft adds other columns to an output, twice over.
+func TestGraftOntoGraft(t *testing.T) {
+	db := duck(t)
+	dir := t.TempDir()
+	first := filepath.Join(dir, "0.parquet")
+	if err := parquetGoMaker("", []int{300, 1, 700}).make(t, db, first); err != nil {
+		t.Fatal(err)
+	}
+	others := table.Spec{Added: make([]table.Field, len(added)), Metadata: []table.KeyValue{{Key: "catenrich.columns", Value: "others"}}}
+	for i, f := range added {
+		f.Name = "earlier_" + f.Name
+		others.Added[i] = f
+	}
+	second, third := filepath.Join(dir, "1.parquet"), filepath.Join(dir, "2.parquet")
+	graft(t, first, second, others)
+	graft(t, second, third, table.Spec{Metadata: []table.KeyValue{{Key: "catenrich.columns", Value: "latest"}}})
+	if err := samePrefix(second, third); err != nil {
+		t.Error(err)
+	}
+	for _, j := range judges {
+		if err := caught(func() error { return j.judge(db, second, third) }); err != nil {
+			t.Errorf("%s: %v", j.name, err)
+		}
+	}
+	p, f, err := openParquetGo(third)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	for key, want := range map[string]string{"catenrich.columns": "latest", "catenrich.1.columns": "others"} {
+		if got, ok := p.Lookup(key); !ok || got != want {
+			t.Errorf("%s is %q, want %q", key, got, want)
+		}
+	}
+}

@@ -47,6 +47,7 @@ type Parquet struct {
 	mu       sync.Mutex
 	encoders []*pageEncoder
 	buffers  [][]byte
+	largest  int // bytes of a slice's pages so far, to make the next buffer in one go
 }
 
 // NewParquet returns a sink that extends src. Of spec it takes Added, Narrow,
@@ -149,7 +150,7 @@ func (w *Parquet) Encode(c *table.Chunk, b *table.Batch) (table.Piece, error) {
 		p.to = len(buf)
 		pages[i] = p
 	}
-	w.putEncoder(e)
+	w.putEncoder(e, len(buf))
 	piece := table.Piece{Parts: make([][]byte, len(pages)), Meta: slicePages{buf, pages}}
 	for i, p := range pages {
 		piece.Parts[i] = buf[p.from:p.to]
@@ -169,6 +170,8 @@ func (w *Parquet) encoder() (*pageEncoder, []byte) {
 	var buf []byte
 	if n := len(w.buffers); n > 0 {
 		buf, w.buffers = w.buffers[n-1][:0], w.buffers[:n-1]
+	} else {
+		buf = make([]byte, 0, w.largest+w.largest/32)
 	}
 	if n := len(w.encoders); n > 0 {
 		e := w.encoders[n-1]
@@ -178,9 +181,10 @@ func (w *Parquet) encoder() (*pageEncoder, []byte) {
 	return &pageEncoder{codec: newCodec(w.codec, w.level), statistics: !w.foot.Indexed && w.foot.Ordered}, buf
 }
 
-func (w *Parquet) putEncoder(e *pageEncoder) {
+func (w *Parquet) putEncoder(e *pageEncoder, used int) {
 	w.mu.Lock()
 	defer w.mu.Unlock()
+	w.largest = max(w.largest, used)
 	w.encoders = append(w.encoders, e)
 }
 

@@ -21,6 +21,8 @@ type pageStore struct {
 	held   int64
 	file   *os.File
 	end    int64 // of what is in the file
+
+	copying []byte // a page on its way from the file
 }
 
 // A storedSlice has the pages of all new columns, one behind another in one
@@ -67,8 +69,12 @@ func (s *pageStore) copyPage(w io.Writer, slice, column int) error {
 		_, err := w.Write(sl.buf[p.from:p.to])
 		return err
 	}
-	_, err := io.Copy(w, io.NewSectionReader(s.file, sl.at+int64(p.from), int64(p.to-p.from)))
-	return fault.IO.Wrap(err)
+	s.copying = grow(s.copying[:0], p.to-p.from)
+	if _, err := s.file.ReadAt(s.copying, sl.at+int64(p.from)); err != nil {
+		return fault.IO.Errorf("reading pages from a scratch file: %w", err)
+	}
+	_, err := w.Write(s.copying)
+	return err
 }
 
 // clear makes room for the next row group.
