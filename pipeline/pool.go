@@ -25,7 +25,8 @@ type task struct {
 }
 
 // stream moves the chunks of src through work to collect. Up to workers calls
-// of work run at once, up to depth chunks are in flight; collect sees the
+// of work run at once, up to depth chunks are in flight while one more is read;
+// collect sees the
 // results in input order, one call at a time. The error returned is the first
 // in input order, so a run fails alike at any worker count. No goroutine
 // outlives the call.

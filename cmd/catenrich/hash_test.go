@@ -219,6 +219,7 @@ magnitude = "mag"`},
 		{`file = "out.csv"`, "file = \"out.csv\"\nencoding = \"plain\""},
 		{`file = "out.csv"`, "file = \"out.csv\"\ncodec = \"snappy\""},
 		{`file = "out.csv"`, "file = \"out.csv\"\nlevel = 3"},
+		{`files = ["in.csv"]`, "files = [\"in.csv\"]\nhdu = 2"},
 		{`bandpass = "band.txt"`, `bandpass = "band.txt", wavelength_unit = "nm"`},
 	}
 
