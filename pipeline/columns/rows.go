@@ -110,8 +110,7 @@ func (z *redshifter) fill(batch *table.Batch, r *Rows, lo, hi int) {
 	b := &r.buffers
 	r.ZIn, r.ZModel = b.zIn[:n], b.zModel[:n]
 	z.read(&batch.In[z.at], r, lo)
-	z.quality.apply(batch, r, lo)
-	frame.Valid(r.ZIn, z.low, z.high, r.Status)
+	frame.Valid(r.ZIn, math.Inf(-1), math.Inf(1), r.Status)
 	if z.directions {
 		z.position.fill(batch, r, lo, hi)
 	}
@@ -121,6 +120,30 @@ func (z *redshifter) fill(batch *table.Batch, r *Rows, lo, hi int) {
 		z.convert(batch, r, lo, hi)
 	}
 	z.model(r)
+	z.refuse(batch, r, lo)
+}
+
+// refuse takes the redshift from rows that the job does not believe: outside
+// its valid range, or without a good quality mark. It comes last, so that all
+// bits that describe a row are set, whichever comes first.
+func (z *redshifter) refuse(batch *table.Batch, r *Rows, lo int) {
+	all := math.IsInf(z.low, -1) && math.IsInf(z.high, 1)
+	if all && z.quality == nil {
+		return
+	}
+	for i, v := range r.ZIn {
+		refused := v < z.low || v > z.high
+		if refused {
+			r.Status[i] |= status.Range
+		}
+		if !z.quality.good(batch, lo+i) {
+			r.Status[i] |= status.Quality
+			refused = true
+		}
+		if refused {
+			r.ZIn[i], r.ZFrame[i], r.ZObs[i], r.ZCos[i], r.ZModel[i] = math.NaN(), math.NaN(), math.NaN(), math.NaN(), math.NaN()
+		}
+	}
 }
 
 // read copies the redshifts as given, and says why a cell has none.
@@ -242,22 +265,14 @@ func newQuality(good []any, at int) *quality {
 	return q
 }
 
-// apply takes the redshift from every row without a good mark.
-func (q *quality) apply(batch *table.Batch, r *Rows, lo int) {
+// good reports whether a row has a good mark; without marks every row has.
+func (q *quality) good(batch *table.Batch, row int) bool {
 	if q == nil {
-		return
+		return true
 	}
 	column := &batch.In[q.at]
-	for i := range r.ZIn {
-		good := false
-		if column.Kind == table.Float {
-			good = q.numbers[column.Float[lo+i]]
-		} else {
-			good = q.words[string(column.Bytes[lo+i])]
-		}
-		if !good {
-			r.Status[i] |= status.Quality
-			r.ZIn[i] = math.NaN()
-		}
+	if column.Kind == table.Float {
+		return q.numbers[column.Float[row]]
 	}
+	return q.words[string(column.Bytes[row])]
 }
