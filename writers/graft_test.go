@@ -1,17 +1,16 @@
 package writers
 
 import (
-	"context"
 	"crypto/sha256"
 	"io"
 	"math"
 	"os"
 	"path/filepath"
-	"sync"
 	"testing"
 
 	"catenrich/internal/table"
 	"catenrich/readers"
+	"catenrich/writers/writertest"
 )
 
 // fileOutput is a table.Output that does the plain thing, for tests.
@@ -67,15 +66,12 @@ func (o *fileOutput) Scratch() (*os.File, error) {
 	return f, err
 }
 
-// A kernel fills b.Out for the rows from first on.
-type kernel func(b *table.Batch, first int64)
-
 // A graftJob is one run from a file to an output.
 type graftJob struct {
 	path    string
 	want    []string // columns the kernel reads, as floats
 	spec    table.Spec
-	kernel  kernel
+	kernel  writertest.Kernel
 	workers int
 }
 
@@ -105,76 +101,13 @@ func (j *graftJob) run(out table.Output) (*Parquet, error) {
 	if err := sink.Begin(out); err != nil {
 		return nil, err
 	}
-	if err := j.pump(src, sink, wants); err != nil {
+	if err := writertest.Pump(src, sink, wants, j.spec.Added, j.workers, j.kernel); err != nil {
 		return nil, err
 	}
 	if err := sink.Finish(); err != nil {
 		return nil, err
 	}
 	return sink, src.Check()
-}
-
-type flight struct {
-	chunk *table.Chunk
-	batch *table.Batch
-	piece table.Piece
-	err   error
-	done  chan struct{}
-}
-
-func (j *graftJob) pump(src table.Source, sink table.Sink, wants []table.Want) error {
-	todo := make(chan *flight)
-	order := make(chan *flight, 2*j.workers)
-	batches := sync.Pool{New: func() any { return new(table.Batch) }}
-	ctx, stop := context.WithCancel(context.Background())
-	var wg sync.WaitGroup
-	defer func() {
-		stop()
-		for range order {
-		}
-		wg.Wait()
-	}()
-	wg.Go(func() {
-		defer close(order)
-		defer close(todo)
-		for ctx.Err() == nil {
-			c, err := src.Next(ctx)
-			if err == io.EOF {
-				return
-			}
-			f := &flight{chunk: c, err: err, done: make(chan struct{})}
-			order <- f
-			if err != nil {
-				close(f.done)
-				return
-			}
-			todo <- f
-		}
-	})
-	for range j.workers {
-		wg.Go(func() {
-			for f := range todo {
-				f.batch = batches.Get().(*table.Batch)
-				f.batch.Reset(f.chunk.Rows, wants, j.spec.Added)
-				if f.err = src.Decode(f.chunk, f.batch); f.err == nil {
-					j.kernel(f.batch, f.chunk.FirstRow)
-					f.piece, f.err = sink.Encode(f.chunk, f.batch)
-				}
-				close(f.done)
-			}
-		})
-	}
-	for f := range order {
-		if <-f.done; f.err != nil {
-			return f.err
-		}
-		if err := sink.Append(f.piece, f.chunk, f.batch); err != nil {
-			return err
-		}
-		src.Release(f.chunk)
-		batches.Put(f.batch)
-	}
-	return nil
 }
 
 // added are the new columns of most tests: one of each kind.
