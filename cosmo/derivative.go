@@ -1,10 +1,18 @@
 package cosmo
 
-import "math"
+import (
+	"math"
+
+	"catenrich/internal/exact"
+)
 
 // slope evaluates the derivative of the polynomial.
 func (p *polynomial) slope(t float64) float64 {
-	return p[1] + float64(t*(2*p[2]+float64(t*(3*p[3]+float64(t*(4*p[4]+float64(t*(5*p[5]+float64(t*(6*p[6]+float64(t*7*p[7])))))))))))
+	s := float64(7 * p[7])
+	for i := order - 2; i > 0; i-- {
+		s = float64(float64(i)*p[i]) + float64(t*s)
+	}
+	return s
 }
 
 // slowStep is the step of ln(1+z) over which quantities that no cell holds are
@@ -21,7 +29,7 @@ func (m *Model) LogSlopeE(out []float64, b *Base) {
 	}
 	for _, i := range b.slow {
 		z := b.Z[i]
-		d := slowStep * (1 + z)
+		d := float64(slowStep * (1 + z))
 		out[i] = (m.slowRate(z+d) - m.slowRate(z-d)) / (2 * slowStep) / b.E[i]
 	}
 }
@@ -42,10 +50,26 @@ func (m *Model) contactLostSlope(z float64) float64 {
 	bits := math.Float64bits(z)
 	i := int(bits>>mantissa) - (1023 + firstLost)
 	if i < 0 || m.future.octaves[i].slow {
-		d := slowStep * z // the age goes as -ln z where z is small
+		d := float64(slowStep * z) // the age goes as -ln z where z is small
 		return (m.slowContactLost(z+d) - m.slowContactLost(z-d)) / (2 * d) * (1 + z)
 	}
 	o := &m.future.octaves[i]
 	p := &m.future.ages[o.first+int32(bits&(1<<mantissa-1)>>(o.shift&63))]
 	return p.slope(z-math.Float64frombits(bits&o.mask)) * (1 + z)
+}
+
+// slowContactLostSlope is the slope at one redshift: with z_x where the event
+// horizon has shrunk to D_C(z), D_C(z_x) moves as D_C(z) does, and so the age
+// t(z_x) by -(1+z)/(E(z) (1+z_x)).
+func (m *Model) slowContactLostSlope(z float64) float64 {
+	h := m.future.grid()
+	g := m.At(DC, z)
+	var x float64
+	if g > h.total {
+		x = 1 + m.invertDistance(g-h.total, 0, z, 0.5*z)
+	} else {
+		u, _ := h.solve(m, g)
+		x = exact.Exp(u)
+	}
+	return -(1 + z) / (m.At(E, z) * x)
 }

@@ -63,7 +63,7 @@ func (e *expansion) tail(u float64) float64 {
 	if e.wa3 != 0 {
 		return 0
 	}
-	s := 1 - 0.5*e.power
+	s := 1 - float64(0.5*e.power)
 	return exact.Exp(s*u) / (s * math.Sqrt(e.dark))
 }
 
@@ -108,7 +108,8 @@ func (h *horizonGrid) solveTail(m *Model, g float64) (u, time float64) {
 		return math.NaN(), math.NaN()
 	}
 	last := len(h.u) - 1
-	s, half := 1-0.5*m.e.power, 0.5*m.e.power
+	half := float64(0.5 * m.e.power)
+	s := 1 - half
 	root := math.Sqrt(m.e.dark)
 	u = (exact.Log(g) + exact.Log(s*root)) / s
 	// int_u^ul e^(-half u') du'/root

@@ -178,11 +178,11 @@ func (b *Bandpass) integral(s *Spectrum, x float64) (value, slope float64) {
 // cell integrates over [left, right], which lies between points j and j+1 of
 // the band and between the redshifted points i and i+1 of the spectrum.
 func (b *Bandpass) cell(s *Spectrum, i, j int, left, right, x float64) (value, slope float64) {
-	mid := 0.5 * (left + right)
+	mid := float64(0.5 * (left + right))
 	df, dr := s.slope[i], b.slope[j]
 	f := func(w float64) float64 { return s.flux[i] + float64(df*(w-s.wave[i])) }
 	r := func(w float64) float64 { return b.resp[j] + float64(dr*(w-b.wave[j])) }
-	wl, wm, wr := r(left), 4*r(mid), r(right)
+	wl, wm, wr := r(left), float64(4*r(mid)), r(right)
 	if !b.energy {
 		wl, wm, wr = left*wl, mid*wm, right*wr
 	}

@@ -138,7 +138,7 @@ func (v *inverse) at(w float64) (z, slope float64) {
 	k := s.off
 	if s.n > 1 {
 		n := float64(s.n)
-		u, scale = u*n, scale*n
+		u, scale = float64(u*n), float64(scale*n)
 		j := min(int32(u), s.n-1)
 		k, u = k+j, u-float64(j)
 	}
@@ -159,7 +159,7 @@ func bracketed(f func(float64) float64, a, b float64) float64 {
 		return b
 	}
 	for range 200 {
-		m := 0.5 * (a + b)
+		m := float64(0.5 * (a + b))
 		fm := f(m)
 		s := math.Sqrt(float64(fm*fm) - float64(fa*fb))
 		if fm == 0 || s == 0 {

@@ -99,7 +99,7 @@ func (n *Inputs) AngularDiameterDistance(p *Partial) {
 func (n *Inputs) LuminosityDistance(p *Partial) {
 	for i := range p.Cos {
 		x := n.Base.X[i]
-		scale := n.HubbleDistance * x * at(n.FrameRatio, i) * at(n.ObsRatio, i) // D_L/D_M
+		scale := float64(n.HubbleDistance * x * at(n.FrameRatio, i) * at(n.ObsRatio, i)) // D_L/D_M
 		p.Cos[i] = scale * (float64(n.slope(i)*x/n.Base.E[i]) - n.Base.DM[i])
 		p.Rest[i] = 2 * scale * n.Base.DM[i]
 	}

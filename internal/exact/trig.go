@@ -42,7 +42,7 @@ func cosPart(r, rl float64) float64 {
 	p = float64(z*p) + 1.0/40320
 	p = float64(z*p) - 1.0/720
 	p = float64(z*p) + 1.0/24
-	half := 0.5 * z
+	half := float64(0.5 * z)
 	w := 1 - half
 	return w + (((1 - w) - half) + (float64(float64(z*z)*p) - float64(r*rl)))
 }
