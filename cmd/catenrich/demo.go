@@ -23,8 +23,8 @@ func (a *app) demoCommand() *cobra.Command {
 		Use:   "demo DIR",
 		Short: "Write the invented Quill Ridge survey and enrich it",
 		Long: `Write an invented survey, Quill Ridge, into DIR: a catalogue with the defects of a
-real one, the truth it was simulated from, and commented job files to start your
-own from. Then run each job.`,
+real one, as CSV and as a wide Parquet file, the truth it was simulated from, and
+commented job files to start your own from. Then run each job.`,
 		Example: `  catenrich demo quillridge
   catenrich demo quillridge --rows 1000000`,
 		Args: cobra.ExactArgs(1),
@@ -33,6 +33,11 @@ own from. Then run each job.`,
 			if err != nil {
 				return err
 			}
+			wide, err := demo.WriteParquet(args[0], options)
+			if err != nil {
+				return err
+			}
+			files = append(files, wide...)
 			if !quiet {
 				fmt.Fprintf(a.stderr, "%s of the invented Quill Ridge survey are in %s\n", plural(len(files), "file"), args[0])
 			}

@@ -1,7 +1,6 @@
 package demo
 
 import (
-	"bytes"
 	"fmt"
 	"io"
 	"math"
@@ -14,17 +13,14 @@ import (
 	"catenrich/internal/fault"
 )
 
-// Names of what WriteParquet leaves.
-const (
-	WideCatalogue = "quill_ridge_wide.parquet"
-	WideJob       = "quill_ridge_wide.toml"
-)
+// WideCatalogue is what WriteParquet leaves.
+const WideCatalogue = "quill_ridge_wide.parquet"
 
 // wideGroup is the rows of a row group.
 const wideGroup = 8192
 
 // WriteParquet writes the same survey as [Write] with the same options, as a
-// Parquet file of 60 columns, and its job file: the rows of the CSV catalogue
+// Parquet file of 60 columns: the rows of the CSV catalogue
 // in their order, without its broken records, the 25 columns with the same
 // float64 values, and 35 more of the types that wide catalogues have. A
 // redshift that is text in the CSV is null. Templates and truth are those of
@@ -38,19 +34,12 @@ func WriteParquet(dir string, o Options) (files []string, err error) {
 	if err != nil {
 		return nil, err
 	}
-	job, err := wideJob()
-	if err != nil {
-		return nil, err
-	}
 	b := newBundle(dir)
 	defer func() {
 		if err != nil {
 			b.discard()
 		}
 	}()
-	if err := b.add(WideJob, job); err != nil {
-		return nil, err
-	}
 	w, err := b.create(WideCatalogue)
 	if err != nil {
 		return nil, err
@@ -60,21 +49,6 @@ func WriteParquet(dir string, o Options) (files []string, err error) {
 		return nil, fault.IO.Errorf("writing the demo's Parquet file: %w", err)
 	}
 	return b.commit()
-}
-
-// wideJob is the job of the CSV catalogue, for the Parquet one: it has no
-// broken records.
-func wideJob() ([]byte, error) {
-	job, err := embedded.ReadFile("files/" + Job)
-	if err != nil {
-		return nil, fmt.Errorf("the demo's own %s: %w", Job, err)
-	}
-	job = bytes.ReplaceAll(job, []byte("quill_ridge.csv"), []byte(WideCatalogue))
-	job = bytes.ReplaceAll(job, []byte(Job), []byte(WideJob))
-	if cut := bytes.Index(job, []byte("\n# Seven records")); cut >= 0 {
-		job = job[:cut]
-	}
-	return job, nil
 }
 
 // A wideRow is a row with what only the wide catalogue has.

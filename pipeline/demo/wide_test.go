@@ -1,7 +1,6 @@
 package demo
 
 import (
-	"bytes"
 	"crypto/sha256"
 	"math"
 	"os"
@@ -144,7 +143,7 @@ func TestWideBytes(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if want := []string{join(dir, WideCatalogue), join(dir, WideJob)}; !slices.Equal(files, want) {
+		if want := []string{join(dir, WideCatalogue)}; !slices.Equal(files, want) {
 			t.Errorf("WriteParquet returned %v, want %v", files, want)
 		}
 		content, err := os.ReadFile(join(dir, WideCatalogue))
@@ -156,15 +155,5 @@ func TestWideBytes(t *testing.T) {
 		} else if sum != first {
 			t.Fatal("two files of the same survey differ")
 		}
-	}
-}
-
-func TestWideJob(t *testing.T) {
-	job, err := wideJob()
-	if err != nil {
-		t.Fatal(err)
-	}
-	if bytes.Contains(job, []byte(".csv")) || !bytes.Contains(job, []byte(`files = ["quill_ridge_wide.parquet"]`)) || bytes.Contains(job, []byte("max_rejects")) {
-		t.Errorf("the wide catalogue's job is that of the CSV:\n%s", job)
 	}
 }
