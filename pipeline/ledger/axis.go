@@ -56,6 +56,23 @@ func CoarseRedshiftAxis() Axis { return Binary("1+z", 1, 3, -7, 14) }
 // CoarseMagnitudeAxis is the other side: half magnitudes, from -60 to 60.
 func CoarseMagnitudeAxis(name string) Axis { return Linear(name, 2, -60, 60) }
 
+// RedshiftOctaveAxis counts positive redshifts by their own octaves, 32 bins in
+// each: it resolves the nearest catalogue as well as the farthest.
+func RedshiftOctaveAxis() Axis { return Binary("z", 0, 5, -14, 14) }
+
+// PlaneRedshiftAxis and PlaneMagnitudeAxis are the sides of the plane of
+// absolute magnitude against redshift: 8 bins an octave of z, half magnitudes.
+func PlaneRedshiftAxis() Axis { return Binary("z", 0, 3, -12, 4) }
+
+// PlaneMagnitudeAxis is described at [PlaneRedshiftAxis].
+func PlaneMagnitudeAxis(name string) Axis { return Linear(name, 2, -40, 0) }
+
+// DensityMagnitudeAxis is what a luminosity function is over: half magnitudes.
+func DensityMagnitudeAxis(name string) Axis { return Linear(name, 2, -40, 0) }
+
+// ErrorAxis counts errors, relative or not, by 4 bins an octave.
+func ErrorAxis(name string) Axis { return Binary(name, 0, 2, -40, 20) }
+
 // maxBins bounds what a histogram read from a file may allocate.
 const maxBins = 1 << 18
 

@@ -22,6 +22,7 @@ type Tally struct {
 	Extents    map[string]*Extent    `json:"extents,omitempty"`
 	Sums       map[string]*Sum       `json:"sums,omitempty"`
 	Histograms map[string]*Histogram `json:"histograms,omitempty"`
+	Densities  map[string]*Density   `json:"densities,omitempty"`
 }
 
 // A Column counts the cells of one added column.
@@ -71,6 +72,9 @@ func (t *Tally) Empty() *Tally {
 	}
 	for name, h := range t.Histograms {
 		put(&e.Histograms, name, NewHistogram(h.axes...))
+	}
+	for name, d := range t.Densities {
+		put(&e.Densities, name, NewDensity(d.axis))
 	}
 	return e
 }
@@ -156,6 +160,11 @@ func (t *Tally) complete() error {
 			return fmt.Errorf("the histogram %q is null", name)
 		}
 	}
+	for name, d := range t.Densities {
+		if d == nil {
+			return fmt.Errorf("the density %q is null", name)
+		}
+	}
 	return nil
 }
 
@@ -198,6 +207,14 @@ func (t *Tally) mergeStatistics(o *Tally) error {
 			put(&t.Histograms, name, NewHistogram(h.axes...))
 		}
 		if err := t.Histograms[name].Merge(h); err != nil {
+			return fault.Data.Wrap(fmt.Errorf("statistic %q: %w", name, err))
+		}
+	}
+	for name, d := range o.Densities {
+		if t.Densities[name] == nil {
+			put(&t.Densities, name, NewDensity(d.axis))
+		}
+		if err := t.Densities[name].Merge(d); err != nil {
 			return fault.Data.Wrap(fmt.Errorf("statistic %q: %w", name, err))
 		}
 	}
