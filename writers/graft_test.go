@@ -6,6 +6,7 @@ import (
 	"math"
 	"os"
 	"path/filepath"
+	"slices"
 	"testing"
 
 	"catenrich/internal/table"
@@ -70,6 +71,7 @@ func (o *fileOutput) Scratch() (*os.File, error) {
 type graftJob struct {
 	path    string
 	want    []string // columns the kernel reads, as floats
+	text    []string // columns that are decoded as text and not looked at
 	spec    table.Spec
 	kernel  writertest.Kernel
 	workers int
@@ -88,12 +90,16 @@ func (j *graftJob) run(out table.Output) (*Parquet, error) {
 		return nil, err
 	}
 	var wants []table.Want
-	for _, name := range j.want {
+	for at, name := range slices.Concat(j.want, j.text) {
 		i, err := src.Schema().Index(name, "test")
 		if err != nil {
 			return nil, err
 		}
-		wants = append(wants, table.Want{Field: i, As: table.Float})
+		as := table.Float
+		if at >= len(j.want) {
+			as = table.Bytes
+		}
+		wants = append(wants, table.Want{Field: i, As: as})
 	}
 	if err := src.Select(wants, j.spec.Added); err != nil {
 		return nil, err

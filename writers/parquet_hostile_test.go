@@ -39,18 +39,22 @@ func graftAll(path string, out table.Output) error {
 	if err != nil {
 		return err
 	}
-	var want []string
+	var want, text []string
 	seen := map[string]int{}
 	for _, f := range src.Schema().Fields {
 		seen[f.Name]++
 	}
 	for _, f := range src.Schema().Fields {
-		if f.Type.Numeric() && seen[f.Name] == 1 {
+		switch {
+		case seen[f.Name] > 1 || f.Type == table.Other:
+		case f.Type.Numeric():
 			want = append(want, f.Name)
+		default:
+			text = append(text, f.Name)
 		}
 	}
 	src.Close()
-	job := graftJob{path: path, want: want, spec: table.Spec{Added: added}, kernel: fill, workers: 2}
+	job := graftJob{path: path, want: want, text: text, spec: table.Spec{Added: added}, kernel: fill, workers: 2}
 	_, err = job.run(out)
 	return err
 }
