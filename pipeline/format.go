@@ -29,9 +29,9 @@ type Format struct {
 // Formats is the table of formats, in the order in which suffixes are tried.
 type Formats []Format
 
-// find returns the format called name, or with a suffix of path where name is
+// Find returns the format called name, or with a suffix of path where name is
 // empty.
-func (f Formats) find(name, path string) (*Format, error) {
+func (f Formats) Find(name, path string) (*Format, error) {
 	lower := strings.ToLower(path)
 	var known []string
 	for i := range f {

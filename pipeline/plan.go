@@ -97,7 +97,7 @@ func (p *Plan) findUnits(formats Formats) error {
 				continue // named by two patterns
 			}
 			seen[u.Input] = true
-			if u.in, err = formats.find(p.Job.Settings.Input.Format, inputName(u.Input)); err != nil {
+			if u.in, err = formats.Find(p.Job.Settings.Input.Format, inputName(u.Input)); err != nil {
 				return fault.Config.Wrap(err)
 			}
 			if u.out, err = p.outputFormat(formats, &u); err != nil {
@@ -182,12 +182,12 @@ func bare(err error) error {
 func (p *Plan) outputFormat(formats Formats, u *Unit) (*Format, error) {
 	name := p.Job.Settings.Output.Format
 	if name == "" && p.Job.File != "" && p.Job.File != Standard {
-		return formats.find("", p.Job.File)
+		return formats.Find("", p.Job.File)
 	}
 	if name == "" {
 		name = u.in.Name
 	}
-	return formats.find(name, "")
+	return formats.Find(name, "")
 }
 
 // outputPath is where a unit's output goes.
