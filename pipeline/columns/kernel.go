@@ -2,6 +2,7 @@ package columns
 
 import (
 	"math"
+	"strings"
 
 	"catenrich/cosmo"
 	"catenrich/cosmo/spread"
@@ -162,7 +163,8 @@ func (k *Kernel) add(in instance, suffix string) output {
 	}
 	if in.form != ValueForm {
 		field.Kind = table.Float
-		field.UCD = "stat.error;" + field.UCD
+		// Of the words that must stand first, a UCD has room for one.
+		field.UCD = "stat.error;" + strings.TrimPrefix(field.UCD, "arith.rate;")
 	}
 	if note := e.Unit.Note(s.LengthUnit); note != "" {
 		field.Description += "; " + note

@@ -50,14 +50,14 @@ var recession = []Entry{
 		Test: func(b *Base, out []uint8) { exceeds(out, b.DC, b.Scales.Horizon) },
 	},
 	{
-		Name: "redshift_drift", Group: "recession", Scope: PerModel, Unit: PerYear, UCD: "src.redshift;arith.rate",
+		Name: "redshift_drift", Group: "recession", Scope: PerModel, Unit: PerYear, UCD: "arith.rate;src.redshift",
 		Doc:  "change of the redshift per year of our time, (1+z) H0 - H(z)",
 		From: "Sandage 1962; Loeb 1998", Uses: cosmo.Drift,
 		Eval:   func(b *Base, out []float64) { scale(out, b.Drift, b.Scales.Rate) },
 		Spread: sloped(0, (*spread.Inputs).RedshiftDrift),
 	},
 	{
-		Name: "velocity_drift", Group: "recession", Scope: PerModel, Unit: SpeedDrift, UCD: "phys.veloc;arith.rate",
+		Name: "velocity_drift", Group: "recession", Scope: PerModel, Unit: SpeedDrift, UCD: "arith.rate;phys.veloc",
 		Doc:  "the redshift drift as a velocity, c/(1+z) dz/dt",
 		From: "Sandage 1962; Loeb 1998", Uses: cosmo.Drift,
 		Eval: func(b *Base, out []float64) {
