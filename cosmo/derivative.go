@@ -50,8 +50,7 @@ func (m *Model) contactLostSlope(z float64) float64 {
 	bits := math.Float64bits(z)
 	i := int(bits>>mantissa) - (1023 + firstLost)
 	if i < 0 || m.future.octaves[i].slow {
-		d := float64(slowStep * z) // the age goes as -ln z where z is small
-		return (m.slowContactLost(z+d) - m.slowContactLost(z-d)) / (2 * d) * (1 + z)
+		return m.slowContactLostSlope(z)
 	}
 	o := &m.future.octaves[i]
 	p := &m.future.ages[o.first+int32(bits&(1<<mantissa-1)>>(o.shift&63))]

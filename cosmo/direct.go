@@ -16,24 +16,45 @@ import (
 // milliseconds; its last bits may differ between machines, so it judges outputs
 // and never makes them.
 func (m *Model) Direct(z float64) Values {
-	if !(z > MinRedshift && z <= MaxRedshift) || m.turns && z <= m.turnAround {
+	if !m.holds(z) {
 		return noValues()
 	}
-	d := direct{m}
+	d := direct{m: m}
 	v := Values{
 		DC:       d.distance(z),
 		E:        d.rate(1 + z),
 		Lookback: d.lookback(z),
 		Age:      d.age(z),
-		Drift:    d.between(z, func(x float64) float64 { return 1 - d.squaredSlope(x)/(2*d.rate(x)) }),
+		Drift:    d.drift(z),
 	}
 	v.DM, v.Slope, v.Volume = d.geometry(v.DC, z > 0)
 	v.ContactLost = d.contactLost(z, v.DC)
 	return v
 }
 
+// holds reports whether rows at z have quantities.
+func (m *Model) holds(z float64) bool {
+	return z > MinRedshift && z <= MaxRedshift && !(m.turns && z <= m.turnAround)
+}
+
 // direct is the model as Direct sees it.
-type direct struct{ m *Model }
+type direct struct {
+	m *Model
+
+	// Where many redshifts are asked for, else nil: the density of each massive
+	// species, and how the event horizon shrinks from today on.
+	neutrinos []*energyCurve
+	ahead     func() shrinking
+}
+
+// shrinking is what direct.shrunk returns from today on for places as near as
+// leastAhead, and the age today.
+type shrinking struct {
+	x, radius []float64
+	now       float64
+}
+
+const leastAhead = 1e-12
 
 // legendre integrates f from a to b by one panel.
 func legendre(f func(float64) float64, a, b float64) float64 {
@@ -82,8 +103,12 @@ func massiveDensity(s *species, x float64) (density, slope float64) {
 // squared returns E^2.
 func (d direct) squared(x float64) float64 {
 	e := &d.m.e
-	sum := e.matter*math.Pow(x, 3) + e.curvature*x*x + e.radiation*math.Pow(x, 4) + e.dark*d.dark(x)
+	sum := e.matter*x*x*x + e.curvature*x*x + e.radiation*x*x*x*x + e.dark*d.dark(x)
 	for i := range e.massive {
+		if d.neutrinos != nil {
+			sum += d.neutrinos[i].density(x)
+			continue
+		}
 		v, _ := massiveDensity(&e.massive[i], x)
 		sum += v
 	}
@@ -93,6 +118,9 @@ func (d direct) squared(x float64) float64 {
 // dark returns f(z).
 func (d direct) dark(x float64) float64 {
 	p := &d.m.params
+	if p.W0 == -1 && p.Wa == 0 {
+		return 1
+	}
 	return math.Exp(3*(1+p.W0+p.Wa)*math.Log(x) - 3*p.Wa*(x-1)/x)
 }
 
@@ -168,10 +196,18 @@ func (d direct) lookback(z float64) float64 {
 	return d.between(z, func(x float64) float64 { return 1 / (x * d.rate(x)) })
 }
 
+// drift integrates 1 - dE/dz.
+func (d direct) drift(z float64) float64 {
+	return d.between(z, func(x float64) float64 { return 1 - d.squaredSlope(x)/(2*d.rate(x)) })
+}
+
 // age integrates over s from the big bang at s = 0, by panels that halve.
 func (d direct) age(z float64) float64 {
 	if !d.m.aging {
 		return math.NaN()
+	}
+	if z != z {
+		return z
 	}
 	if z < 0 {
 		return d.age(0) - d.lookback(z)
@@ -268,13 +304,37 @@ func (d direct) radiusBetween(low, high float64) float64 {
 	})
 }
 
-// contactLost finds where the event horizon has shrunk to dc, by bisection in
-// ln x that changes to Newton's method once close.
+// contactLost returns the age when the event horizon has shrunk to dc.
 func (d direct) contactLost(z, dc float64) float64 {
-	if !d.m.horizon || !d.m.aging || z <= 0 {
+	u := d.exit(z, dc)
+	if !(u < 0) {
+		return d.age(math.Expm1(u))
+	}
+	// the time from today until then, over u because s would be large
+	later := converge(int(-u/0.5)+1, func(n int) (sum float64) {
+		for k := range n {
+			sum += legendre(func(v float64) float64 { return 1 / d.rate(math.Exp(v)) }, u*float64(k+1)/float64(n), u*float64(k)/float64(n))
+		}
+		return sum
+	})
+	if d.ahead != nil {
+		return d.ahead().now + later
+	}
+	return d.age(0) + later
+}
+
+// exit finds ln(1+z_x) where the event horizon has shrunk to dc, by bisection
+// that changes to Newton's method once close; NaN where there is no such place.
+func (d direct) exit(z, dc float64) float64 {
+	if !d.m.horizon || !d.m.aging || !(z > 0) {
 		return math.NaN()
 	}
-	x, radius := d.shrunk(1+z, dc)
+	var x, radius []float64
+	if d.ahead != nil && dc >= leastAhead && dc < d.ahead().radius[0] {
+		x, radius = d.ahead().x, d.ahead().radius
+	} else {
+		x, radius = d.shrunk(1+z, dc)
+	}
 	j := 0
 	for j+1 < len(x) && radius[j+1] > dc {
 		j++
@@ -300,15 +360,5 @@ func (d direct) contactLost(z, dc float64) float64 {
 			u = (low + high) / 2
 		}
 	}
-	if u >= 0 {
-		return d.age(math.Expm1(u))
-	}
-	// the time from today until then, over u because s would be large
-	later := converge(int(-u/0.5)+1, func(n int) (sum float64) {
-		for k := range n {
-			sum += legendre(func(v float64) float64 { return 1 / d.rate(math.Exp(v)) }, u*float64(k+1)/float64(n), u*float64(k)/float64(n))
-		}
-		return sum
-	})
-	return d.age(0) + later
+	return u
 }
