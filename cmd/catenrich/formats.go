@@ -45,7 +45,7 @@ func formats() pipeline.Formats {
 		},
 		{
 			Name:     "fits",
-			Suffixes: []string{".fits", ".fit", ".fits.gz", ".fit.gz"},
+			Suffixes: []string{".fits", ".fit", ".fits.gz"},
 			Open: func(path string, in *job.InputSettings) (table.Source, error) {
 				return readers.OpenFITS(path, readers.FITSOptions{HDU: in.HDU})
 			},

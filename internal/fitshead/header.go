@@ -46,7 +46,7 @@ func Read(r io.Reader) (*Header, error) {
 	h := &Header{first: make(map[string]int), again: make(map[string]bool)}
 	for {
 		from := len(h.raw)
-		if from == maxHeader {
+		if from >= maxHeader {
 			return nil, fmt.Errorf("%w in its first %d MiB", ErrNoEnd, maxHeader>>20)
 		}
 		h.raw = append(h.raw, make([]byte, BlockSize)...)
@@ -75,8 +75,11 @@ func (h *Header) index(from int) (ended bool, err error) {
 			}
 		}
 		key := string(bytes.TrimRight(keyword, " "))
-		if key == "END" {
+		switch {
+		case key == "END":
 			return true, nil
+		case i > 0 && (key == "XTENSION" || key == "SIMPLE") && hasValue(h.card(i)):
+			return false, fmt.Errorf("%w: another header begins in it, at record %d", ErrNoEnd, i+1)
 		}
 		h.cards = i + 1
 		if _, ok := h.first[key]; ok {
