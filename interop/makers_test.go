@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -190,7 +191,7 @@ func parquetGoMakers() []maker {
 func makeAll(t testing.TB, db *sql.DB) map[string]string {
 	dir := t.TempDir()
 	files := make(map[string]string)
-	for i, m := range append(duckMakers(), parquetGoMakers()...) {
+	for i, m := range slices.Concat(duckMakers(), parquetGoMakers(), handmadeMakers()) {
 		path := filepath.Join(dir, fmt.Sprintf("%03d.parquet", i))
 		if err := m.make(t, db, path); err != nil {
 			t.Errorf("%s: not made: %v", m.name, err)

@@ -9,6 +9,9 @@ import (
 	"catenrich/internal/table"
 )
 
+// specs are the choices of encoding and codec.
+var specs = []table.Spec{{}, {Encoding: "plain"}, {Codec: "snappy"}, {Codec: "none"}}
+
 // TestMatrix grafts onto every file that the makers make, by default and with
 // each other choice of encoding and codec, and lets every judge read it. What
 // a judge cannot read of the input it is not asked of the output; each such
@@ -21,7 +24,6 @@ func TestMatrix(t *testing.T) {
 		names = append(names, name)
 	}
 	sort.Strings(names)
-	specs := []table.Spec{{}, {Encoding: "plain"}, {Codec: "snappy"}, {Codec: "none"}}
 	read := map[string]int{}
 	skipped := map[string]int{}
 	for _, name := range names {

@@ -237,14 +237,15 @@ func roomOf(leaf *parquetfoot.Leaf, k *parquetfoot.Chunk) int64 {
 	width := int64(8)
 	switch leaf.Physical {
 	case parquetfoot.ByteArray:
-		return max(parquet.DefaultMaxUncompressedPageSize, k.Uncompressed+1<<16)
+		return max(parquet.DefaultMaxUncompressedPageSize, min(k.Uncompressed, math.MaxInt32)+1<<16)
 	case parquetfoot.FixedLenByteArray:
 		width = max(8, int64(leaf.Length))
 	}
 	if k.Values > math.MaxInt32/(width+8) {
 		return math.MaxInt32
 	}
-	return 1<<20 + k.Values*(width+8)
+	// A dictionary may have more entries than the chunk has values.
+	return max(1<<20+k.Values*(width+8), min(k.Uncompressed, parquet.DefaultMaxUncompressedPageSize))
 }
 
 func (c *parquetCursor) close() {
