@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"reflect"
+	"regexp"
 	"strings"
 
 	"github.com/pelletier/go-toml/v2"
@@ -21,7 +22,7 @@ func Parse(name string, text []byte) (*File, error) {
 	f := &File{Name: name}
 	decoder := toml.NewDecoder(bytes.NewReader(text)).DisallowUnknownFields()
 	if err := decoder.Decode(f); err != nil {
-		return nil, fault.Config.Wrap(explain(name, err))
+		return nil, fault.Config.Wrap(explain(name, text, err))
 	}
 	f.places = positions(name, text)
 	return f, nil
@@ -29,12 +30,17 @@ func Parse(name string, text []byte) (*File, error) {
 
 // explain rewrites the TOML library's errors as name:line:column: reason, one
 // a line.
-func explain(name string, err error) error {
+func explain(name string, text []byte, err error) error {
 	if strict := new(toml.StrictMissingError); errors.As(err, &strict) {
+		// The library leaves the name of an inline table out of a key in it.
+		paths := make(map[[2]int][]string)
+		eachKey(text, func(path string, line, column int) {
+			paths[[2]int{line, column}] = strings.Split(elements.ReplaceAllString(path, ""), ".")
+		})
 		var all []error
 		for i := range strict.Errors {
 			line, column := strict.Errors[i].Position()
-			all = append(all, fmt.Errorf("%s:%d:%d: %s", name, line, column, unknownKey(strict.Errors[i].Key())))
+			all = append(all, fmt.Errorf("%s:%d:%d: %s", name, line, column, unknownKey(paths[[2]int{line, column}])))
 		}
 		return errors.Join(all...)
 	}
@@ -47,7 +53,7 @@ func explain(name string, err error) error {
 
 // unknownKey says that the last element of key is no key of its table, and
 // which keys come nearest to it.
-func unknownKey(key toml.Key) string {
+func unknownKey(key []string) string {
 	last := len(key) - 1
 	if last < 0 {
 		return "unknown key"
@@ -100,16 +106,26 @@ func tomlKey(f reflect.StructField) string {
 	return key
 }
 
+// elements are the places in lists within a key path.
+var elements = regexp.MustCompile(`\[\d+\]`)
+
 // positions maps each key path of a document, such as cosmology[1].h0, to
 // "name:line: path". The document has been decoded, so it is well formed.
 func positions(name string, text []byte) map[string]string {
-	p := new(unstable.Parser)
-	p.Reset(text)
 	places := make(map[string]string)
+	eachKey(text, func(path string, line, _ int) { places[path] = fmt.Sprintf("%s:%d: %s", name, line, path) })
+	return places
+}
+
+// eachKey visits the keys and tables of a well-formed document, those of
+// inline tables included, with the place of each key's first letter.
+func eachKey(text []byte, visit func(path string, line, column int)) {
+	w := keyWalk{Parser: new(unstable.Parser), visit: visit}
+	w.Reset(text)
 	tables := make(map[string]int) // array tables seen so far, by path
 	prefix := ""
-	for p.NextExpression() {
-		node := p.Expression()
+	for w.NextExpression() {
+		node := w.Expression()
 		switch node.Kind {
 		case unstable.Table:
 			prefix = keyPath("", node, tables)
@@ -118,35 +134,48 @@ func positions(name string, text []byte) map[string]string {
 			prefix = fmt.Sprintf("%s[%d]", bare, tables[bare])
 			tables[bare]++
 		case unstable.KeyValue:
-			mark(p, name, prefix, node, places)
+			w.key(prefix, node)
 			continue
 		default:
 			continue
 		}
-		places[prefix] = fmt.Sprintf("%s:%d: %s", name, lineOf(p, node), prefix)
+		w.at(prefix, node)
 	}
-	return places
 }
 
-// mark records one key and, if its value is an inline table or an array of
+// A keyWalk is one call of eachKey.
+type keyWalk struct {
+	*unstable.Parser
+	visit func(path string, line, column int)
+}
+
+// at visits a node by the place of its key.
+func (w *keyWalk) at(path string, node *unstable.Node) {
+	if keys := node.Key(); keys.Next() {
+		start := w.Shape(keys.Node().Raw).Start
+		w.visit(path, start.Line, start.Column)
+	}
+}
+
+// key visits one key and, if its value is an inline table or an array of
 // them, the keys within.
-func mark(p *unstable.Parser, name, prefix string, node *unstable.Node, places map[string]string) {
+func (w *keyWalk) key(prefix string, node *unstable.Node) {
 	path := keyPath(prefix, node, nil)
-	places[path] = fmt.Sprintf("%s:%d: %s", name, lineOf(p, node), path)
-	markValue(p, name, path, node.Value(), places)
+	w.at(path, node)
+	w.value(path, node.Value())
 }
 
-func markValue(p *unstable.Parser, name, path string, value *unstable.Node, places map[string]string) {
+func (w *keyWalk) value(path string, value *unstable.Node) {
 	children := value.Children()
 	switch value.Kind {
 	case unstable.InlineTable:
 		for children.Next() {
-			mark(p, name, path, children.Node(), places)
+			w.key(path, children.Node())
 		}
 	case unstable.Array:
 		for i := 0; children.Next(); i++ {
 			if child := children.Node(); child.Kind == unstable.InlineTable {
-				markValue(p, name, fmt.Sprintf("%s[%d]", path, i), child, places)
+				w.value(fmt.Sprintf("%s[%d]", path, i), child)
 			}
 		}
 	}
@@ -166,15 +195,6 @@ func keyPath(prefix string, node *unstable.Node, tables map[string]int) string {
 		path += string(parts.Node().Data)
 	}
 	return path
-}
-
-// lineOf returns the line of the node's key.
-func lineOf(p *unstable.Parser, node *unstable.Node) int {
-	keys := node.Key()
-	if !keys.Next() {
-		return 0
-	}
-	return p.Shape(keys.Node().Raw).Start.Line
 }
 
 // Flagged records that a flag set the key at path, so that messages about the
