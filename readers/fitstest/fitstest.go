@@ -97,7 +97,7 @@ func (t *Table) HDU() []byte {
 		if t.Rows > 0 {
 			width += int64(len(c.Cells) / t.Rows)
 		} else {
-			width += emptyWidths[c.Form]
+			width += widths[c.Form]
 		}
 	}
 	cards := []string{Text("XTENSION", "BINTABLE"), Int("BITPIX", 8), Int("NAXIS", 2), Int("NAXIS1", width), Int("NAXIS2", int64(t.Rows)),
@@ -119,9 +119,6 @@ func (t *Table) HDU() []byte {
 	data := t.data()
 	return append(Header(append(cards, t.Cards...)...), Pad(data, 0)...)
 }
-
-// emptyWidths are the widths of the forms that tests of empty tables use.
-var emptyWidths = map[string]int64{"D": 8, "E": 4, "J": 4, "K": 8, "I": 2, "B": 1, "L": 1}
 
 func (t *Table) data() (data []byte) {
 	for row := range t.Rows {
