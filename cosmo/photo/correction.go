@@ -81,12 +81,38 @@ func (k PowerLaw) Scale(q float64) (float64, bool) {
 	return float64(-2.5 * (1 + k.Alpha) * exact.Log10(q)), true
 }
 
+// Unknown stands for a K-correction that cannot be computed, because what it is
+// made from is not at hand: NaN everywhere, and known nowhere.
+type Unknown struct{}
+
+// Value is NaN.
+func (Unknown) Value(float64) float64 { return math.NaN() }
+
+// Slope is NaN.
+func (Unknown) Slope(float64) float64 { return math.NaN() }
+
+// Range is empty.
+func (Unknown) Range() (lo, hi float64) { return math.Inf(1), math.Inf(-1) }
+
+// Scale is not known.
+func (Unknown) Scale(float64) (float64, bool) { return math.NaN(), false }
+
 // A Set is the K-corrections of a band, one for each template. A band without
 // templates has one.
 type Set struct {
 	Each  []Correction
 	Names []string // of the templates; nil without
 	index map[string]int32
+}
+
+// Lost reports whether the set is of a correction that is [Unknown]. A nil set
+// is none.
+func (s *Set) Lost() bool {
+	if s == nil {
+		return false
+	}
+	_, lost := s.Each[0].(Unknown)
+	return lost
 }
 
 // Single returns the set of a band without templates.

@@ -16,7 +16,7 @@ type Base struct {
 	Rows   *Rows
 	Scales *Scales
 
-	model     *cosmo.Model
+	model     Model
 	surveyors []surveyor
 	job       *job.Settings
 	cutBands  []int

@@ -29,11 +29,14 @@ type Kernel struct {
 	selected  []bool // whether any column of each selection is there
 	cutBands  []int  // index of each cut's band
 	stats     []*Entry
+	outputs   []output // by their place in Batch.Out
+	direct    bool     // made by NewDirect
 }
 
 // model is one cosmology and the columns it gives.
 type model struct {
-	*cosmo.Model
+	Model
+	cells     *cosmo.Model // the model as the job has it
 	uses      cosmo.Quantity
 	scales    Scales
 	columns   []output
@@ -55,13 +58,19 @@ type output struct {
 
 // New makes the kernel of a job. The tables of its models are built here.
 func New(j *job.Job) *Kernel {
-	k := &Kernel{job: j, bandTerms: make([]Term, len(j.Bands)), selected: make([]bool, len(j.Selections))}
+	return newKernel(j, func(m *cosmo.Model) Model { return m }, false)
+}
+
+// newKernel makes a kernel whose models are seen through a path to them.
+func newKernel(j *job.Job, path func(*cosmo.Model) Model, direct bool) *Kernel {
+	k := &Kernel{job: j, direct: direct, bandTerms: make([]Term, len(j.Bands)), selected: make([]bool, len(j.Selections))}
 	for i := range j.Settings.Cuts {
 		k.cutBands = append(k.cutBands, j.Band(j.Settings.Cuts[i].Band))
 	}
 	wanted := k.wanted()
-	for i, m := range j.Models {
-		c := model{Model: m, scales: scales(m, j.Settings.LengthUnit), h0: m.Params().H0, antipode: m.Antipode(), turns: make(map[int]spread.Turns)}
+	for i, cells := range j.Models {
+		m := path(cells)
+		c := model{Model: m, cells: cells, scales: scales(m, j.Settings.LengthUnit), h0: m.Params().H0, antipode: m.Antipode(), turns: make(map[int]spread.Turns)}
 		for _, in := range wanted {
 			switch {
 			case in.Scope == PerModel:
@@ -75,6 +84,9 @@ func New(j *job.Job) *Kernel {
 			if k.selected[s] {
 				c.uses |= cosmo.Volume
 			}
+		}
+		if direct {
+			c.uses |= sizeUses
 		}
 		c.Prepare(c.uses)
 		for s := range j.Selections {
@@ -174,7 +186,8 @@ func (k *Kernel) add(in instance, suffix string) output {
 	}
 	k.added = append(k.added, field)
 	k.stats = append(k.stats, e)
-	return output{e, in.item, in.form, len(k.added) - 1}
+	k.outputs = append(k.outputs, output{e, in.item, in.form, len(k.added) - 1})
+	return k.outputs[len(k.outputs)-1]
 }
 
 // Added returns the added columns in output order, the status column last.
@@ -188,10 +201,16 @@ type Scratch struct {
 
 	low, high *rim         // of intervals; nil where the job has none
 	ends      [5][]float64 // of the interval at hand
+	sizes     [][]float64  // of each column, as Judge returns them; nil while running
 }
 
 // Run computes every added column of a decoded batch, and counts it.
 func (b *Bound) Run(batch *table.Batch, s *Scratch, tally Tally) {
+	b.run(batch, s, &tally)
+}
+
+// run is Run; it counts nothing where tally is nil.
+func (b *Bound) run(batch *table.Batch, s *Scratch, tally *Tally) {
 	s.fit(b)
 	for i, sentinels := range b.sentinels {
 		dropSentinels(&batch.In[i], sentinels)
@@ -210,7 +229,9 @@ func (b *Bound) Run(batch *table.Batch, s *Scratch, tally Tally) {
 			s.fillRims(b.redshift, batch, lo, hi)
 		}
 		b.compute(batch, s, lo, hi)
-		tally.count(batch, &s.rows, lo, hi)
+		if tally != nil {
+			tally.count(batch, &s.rows, lo, hi)
+		}
 	}
 }
 
@@ -290,24 +311,35 @@ func (k *Kernel) compute(b *table.Batch, s *Scratch, lo, hi int) {
 // bit of the row's status that says why. m is nil for a column that does not
 // depend on the model.
 func (k *Kernel) column(o output, s *Scratch, m *model, b *table.Batch, lo, hi int) {
-	base, rows := &s.base, &s.rows
-	base.item = o.item
+	s.base.item = o.item
 	if o.entry.Test != nil {
-		out := b.Out[o.at].Flag[lo:hi]
-		o.entry.Test(base, out)
-		for i, v := range out {
-			if v == table.Null {
-				rows.blame(o.entry, i)
-			}
-		}
-		return
+		s.flags(o, b.Out[o.at].Flag[lo:hi])
+	} else {
+		s.numbers(o, m, b.Out[o.at].Float[lo:hi])
 	}
-	out := b.Out[o.at].Float[lo:hi]
+	if s.sizes != nil {
+		s.size(o, m, b, lo, hi)
+	}
+}
+
+// flags is column for flags.
+func (s *Scratch) flags(o output, out []uint8) {
+	o.entry.Test(&s.base, out)
+	for i, v := range out {
+		if v == table.Null {
+			s.rows.blame(o.entry, i)
+		}
+	}
+}
+
+// numbers is column for numbers.
+func (s *Scratch) numbers(o output, m *model, out []float64) {
+	rows := &s.rows
 	switch o.form {
 	case ValueForm:
-		o.entry.Eval(base, out)
+		o.entry.Eval(&s.base, out)
 	case ErrorForm:
-		o.entry.Spread.Error(base, out)
+		o.entry.Spread.Error(&s.base, out)
 	default:
 		s.interval(o, m, out)
 	}

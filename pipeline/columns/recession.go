@@ -31,6 +31,7 @@ var recession = []Entry{
 		Doc:  "whether the object recedes faster than light today: it lies outside the Hubble sphere",
 		From: "Davis & Lineweaver 2004", Uses: cosmo.DC,
 		Test: func(b *Base, out []uint8) { exceeds(out, b.DC, 1) },
+		Size: superluminalNowSize,
 	},
 	{
 		Name: "superluminal_at_emission", Group: "recession", Scope: PerModel, UCD: "meta.code;phys.cosmology",
@@ -42,12 +43,14 @@ var recession = []Entry{
 				out[i] = flag(e[i]*dc[i]/x[i], 1)
 			}
 		},
+		Size: superluminalAtEmissionSize,
 	},
 	{
 		Name: "beyond_event_horizon", Group: "recession", Scope: PerModel, UCD: "meta.code;phys.cosmology",
 		Doc:  "whether a signal sent today can never arrive there; false in a model without an event horizon",
 		From: "Davis & Lineweaver 2004", Uses: cosmo.DC,
 		Test: func(b *Base, out []uint8) { exceeds(out, b.DC, b.Scales.Horizon) },
+		Size: beyondHorizonSize,
 	},
 	{
 		Name: "redshift_drift", Group: "recession", Scope: PerModel, Unit: PerYear, UCD: "arith.rate;src.redshift",
@@ -55,6 +58,7 @@ var recession = []Entry{
 		From: "Sandage 1962; Loeb 1998", Uses: cosmo.Drift,
 		Eval:   func(b *Base, out []float64) { scale(out, b.Drift, b.Scales.Rate) },
 		Spread: sloped(0, (*spread.Inputs).RedshiftDrift),
+		Size:   redshiftDriftSize,
 	},
 	{
 		Name: "velocity_drift", Group: "recession", Scope: PerModel, Unit: SpeedDrift, UCD: "arith.rate;phys.veloc",
@@ -64,6 +68,7 @@ var recession = []Entry{
 			divide(out, b.Drift, b.X, b.Scales.Rate*cosmo.SpeedOfLight*centimetresPerKm)
 		},
 		Spread: sloped(0, (*spread.Inputs).VelocityDrift),
+		Size:   velocityDriftSize,
 	},
 }
 

@@ -71,7 +71,13 @@ type Entry struct {
 	// error nor interval.
 	Spread spreadRule
 
-	// Test is the same for a column of flags: table.True, False or Null.
+	// Size turns values into what their errors are measured against, where that
+	// is not the value itself, or a magnitude (a factor e) for magnitudes; for
+	// flags it fills in how far, in parts, each is from changing. Only proofs
+	// ask, see [Bound.Judge].
+	Size func(b *Base, out []float64)
+
+	// Test is Eval for a column of flags: table.True, False or Null.
 	Test func(b *Base, out []uint8)
 }
 

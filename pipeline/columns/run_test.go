@@ -96,7 +96,11 @@ func bind(t testing.TB, text string, rows int, cell func(column string, row int,
 	k := New(resolve(t, text))
 	schema := &table.Schema{File: "in.csv"}
 	for _, n := range k.Needs() {
-		schema.Fields = append(schema.Fields, table.Field{Name: n.Column})
+		field := table.Field{Name: n.Column}
+		if n.Role == job.RoleRightAscension || n.Role == job.RoleDeclination {
+			field.Type = table.Float64 // degrees, not sexagesimal text
+		}
+		schema.Fields = append(schema.Fields, field)
 	}
 	// Two roles may read one column: the schema has it once.
 	seen := make(map[string]bool)
@@ -151,7 +155,7 @@ func TestIdentities(t *testing.T) {
 	} {
 		w := bind(t, "columns.redshift = \"z\"\nadd.columns = [\"all\"]\n[[cosmology]]\n"+model, rows, redshiftCell(rows))
 		w.run()
-		m := w.models[0].Model
+		m := w.models[0].cells
 		at := func(column string, i int) float64 { return w.column(t, column).Float[i] }
 		near := func(what string, i int, got, want float64) {
 			t.Helper()
@@ -391,6 +395,12 @@ func (w *bench) computeOnly() {
 		s.rows.Status = bits[lo:hi]
 		w.redshift.fill(batch, &s.rows, lo, hi)
 		s.rows.fillTerms(batch, lo, hi)
+		if w.terms&errorTerm != 0 {
+			s.rows.fillSigmas(w.redshift, batch, lo, hi)
+		}
+		if s.low != nil {
+			s.fillRims(w.redshift, batch, lo, hi)
+		}
 		w.compute(batch, s, lo, hi)
 	}
 }

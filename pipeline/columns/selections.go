@@ -16,12 +16,14 @@ var selections = []Entry{
 		Doc:  "lowest cosmological redshift at which the selection would have held the object",
 		From: "Schmidt 1968; Felten 1976", Uses: cosmo.DM, Terms: selectionTerm,
 		Eval: func(b *Base, out []float64) { copy(out, b.roots().zMin) },
+		Size: zMinSize,
 	},
 	{
 		Name: "z_max", Group: "selection", Scope: PerModel, Family: PerSelection, UCD: "src.redshift;stat.max",
 		Doc:  "highest cosmological redshift at which the selection would have held the object",
 		From: "Schmidt 1968; Felten 1976", Uses: cosmo.DM, Terms: selectionTerm,
 		Eval: func(b *Base, out []float64) { copy(out, b.roots().zMax) },
+		Size: zMaxSize,
 	},
 	{
 		Name: "v_max", Group: "selection", Scope: PerModel, Family: PerSelection, Unit: Volume, UCD: "phys.volume;stat.max",
@@ -31,12 +33,14 @@ var selections = []Entry{
 			b.volumes(&selection.Volumes{Vmax: out})
 			scale(out, out, b.Scales.PerMpc*b.Scales.PerMpc*b.Scales.PerMpc)
 		},
+		Size: volumeSize,
 	},
 	{
 		Name: "v_over_v_max", Group: "selection", Scope: PerModel, Family: PerSelection, UCD: "phys.volume;arith.ratio",
 		Doc:  "the object's own volume over its V_max, both from z_min; evenly spread from 0 to 1 in a complete sample",
 		From: "Schmidt 1968", Uses: cosmo.DM, Terms: selectionTerm, Summed: true,
 		Eval: func(b *Base, out []float64) { b.volumes(&selection.Volumes{OverVmax: out}) },
+		Size: volumeShareSize,
 	},
 	{
 		Name: "vmax_weight", Group: "selection", Scope: PerModel, Family: PerSelection, Unit: PerVolume, UCD: "stat.weight",
@@ -47,12 +51,14 @@ var selections = []Entry{
 			perUnit := 1 / b.Scales.PerMpc
 			scale(out, out, perUnit*perUnit*perUnit)
 		},
+		Size: volumeSize,
 	},
 	{
 		Name: "in", Group: "selection", Scope: PerModel, Family: PerCut, UCD: "meta.code",
 		Doc:  "whether the object belongs to the volume-limited sample",
 		From: "common practice, no source", Uses: cosmo.DM, Terms: magnitudeTerms,
 		Test: func(b *Base, out []uint8) { b.cut(out) },
+		Size: cutSize,
 	},
 }
 
@@ -62,7 +68,7 @@ type surveyor struct {
 	limits []*selection.Selection
 }
 
-func newSurveyor(p *job.SelectionPlan, m *cosmo.Model, bands []job.BandPlan) surveyor {
+func newSurveyor(p *job.SelectionPlan, m Model, bands []job.BandPlan) surveyor {
 	s := surveyor{plan: p}
 	for i := range p.Limits {
 		l := &p.Limits[i]

@@ -333,16 +333,23 @@ func (k *Kernel) findTurns(m *model, o output) spread.Turns {
 	if k.job.Settings.Redshift.Signed {
 		low = cosmo.MinRedshift
 	}
-	return spread.FindTurns(func(z float64) float64 {
+	at := func(path Model, z float64) float64 {
 		rows.ZModel[0] = z
 		for i := range rows.bands {
 			rows.bands[i].rest(z)
 		}
-		m.Fill(&base.Base, o.entry.Uses, rows.ZModel)
+		path.Fill(&base.Base, o.entry.Uses, rows.ZModel)
 		base.begin(m)
 		o.entry.Eval(&base, out)
 		return out[0]
-	}, low, cosmo.MaxRedshift)
+	}
+	turns := spread.FindTurns(func(z float64) float64 { return at(m.cells, z) }, low, cosmo.MaxRedshift)
+	if k.direct { // where it turns moves the value there by nothing: the cells will do
+		for i, z := range turns.Z {
+			turns.X[i] = at(m.Model, z)
+		}
+	}
+	return turns
 }
 
 // blameSpread gives the reason for an error or an interval that is null where

@@ -110,7 +110,7 @@ const (
 )
 
 // scales returns the scales of a model for a length unit of the job file.
-func scales(m *cosmo.Model, length string) Scales {
+func scales(m Model, length string) Scales {
 	mpc := m.HubbleDistance()
 	little := 1.0 // h where lengths are in Mpc/h
 	per := 1.0
