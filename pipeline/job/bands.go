@@ -289,6 +289,13 @@ func (r *resolver) sideFile(path, use, name string, s *KSettings) []byte {
 	if name == "" {
 		return nil
 	}
+	if r.find != nil {
+		text := r.find(name)
+		if s.Files[use] = name; text == nil {
+			r.lost = append(r.lost, LostFile{path, use, name})
+		}
+		return text
+	}
 	full := name
 	if !filepath.IsAbs(full) {
 		full = filepath.Join(r.job.Base, full)

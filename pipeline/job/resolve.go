@@ -98,6 +98,11 @@ type resolver struct {
 	job     *Job
 	wrong   []error
 	refused bool // a fault of content, not of form: exit 78 even from flags
+
+	// Where recorded settings are resolved: how side files are found by digest,
+	// nil otherwise, and those that were not.
+	find func(sha256 string) []byte
+	lost []LostFile
 }
 
 // fail records a fault of the setting at path.
