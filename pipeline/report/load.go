@@ -1,0 +1,106 @@
+package report
+
+import (
+	"errors"
+	"io"
+	"io/fs"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"catenrich/internal/fault"
+	"catenrich/internal/publish"
+	"catenrich/pipeline/ledger"
+)
+
+const (
+	manifestSuffix = ".manifest.json"
+	pendingSuffix  = ".manifest.pending"
+	maxManifest    = 64 << 20
+)
+
+// Load reads a release: every manifest below a directory, or the one manifest
+// that path names or that stands beside the output it names. A manifest that
+// is damaged, or whose publication was interrupted, is listed as missing.
+// Without any manifest it is a fault of class [fault.NoInput].
+func Load(path string) (*Release, error) {
+	info, err := os.Stat(path)
+	if err != nil {
+		return nil, fault.NoInput.Wrap(err)
+	}
+	if !info.IsDir() {
+		if !strings.HasSuffix(path, manifestSuffix) {
+			path = publish.ManifestPath(path)
+		}
+		m, err := read(path)
+		if err != nil {
+			return nil, err
+		}
+		return New([]*ledger.Manifest{m}, nil)
+	}
+	units, missing, err := walk(path)
+	if err != nil {
+		return nil, err
+	}
+	if len(units)+len(missing) == 0 {
+		return nil, fault.NoInput.Errorf("%s holds no manifest (*%s): name the directory that `catenrich run` wrote to", path, manifestSuffix)
+	}
+	return New(units, missing)
+}
+
+// walk finds the manifests below dir.
+func walk(dir string) (units []*ledger.Manifest, missing []Missing, err error) {
+	err = filepath.WalkDir(dir, func(path string, e fs.DirEntry, err error) error {
+		if err != nil {
+			return err
+		}
+		name, err := filepath.Rel(dir, path)
+		if err != nil || !e.Type().IsRegular() {
+			return err
+		}
+		name = filepath.ToSlash(name)
+		if output, ok := strings.CutSuffix(name, pendingSuffix); ok {
+			missing = append(missing, Missing{output, "its publication was interrupted: run the job again"})
+			return nil
+		}
+		output, ok := strings.CutSuffix(name, manifestSuffix)
+		if !ok {
+			return nil
+		}
+		m, err := read(path)
+		switch {
+		case fault.Of(err) == fault.Data:
+			missing = append(missing, Missing{output, "its manifest is damaged, or was not written by this program"})
+			return nil
+		case err != nil:
+			return err
+		}
+		units = append(units, m)
+		return nil
+	})
+	return units, missing, fault.NoInput.Wrap(err)
+}
+
+// read reads one manifest.
+func read(path string) (*ledger.Manifest, error) {
+	f, err := os.Open(path)
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, fault.NoInput.Errorf("%s does not exist: name a directory of outputs, an output of `catenrich run`, or its manifest", path)
+	}
+	if err != nil {
+		return nil, fault.NoInput.Wrap(err)
+	}
+	defer f.Close()
+	text, err := io.ReadAll(io.LimitReader(f, maxManifest+1))
+	if err != nil {
+		return nil, fault.IO.Wrap(err)
+	}
+	if len(text) > maxManifest {
+		return nil, fault.Data.Errorf("%s is larger than any manifest", path)
+	}
+	m, err := ledger.Parse(text)
+	if err != nil {
+		return nil, fault.Data.Errorf("%s: %w", path, err)
+	}
+	return m, nil
+}

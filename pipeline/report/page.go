@@ -1,0 +1,174 @@
+package report
+
+import (
+	"bytes"
+	_ "embed"
+	"fmt"
+	"html/template"
+	"io"
+
+	"catenrich/pipeline/ledger"
+)
+
+//go:embed page.html
+var pageHTML string
+
+//go:embed page.css
+var pageCSS string
+
+// page is the parsed template.
+var page = template.Must(template.New("page").Parse(pageHTML))
+
+// view is what the template shows.
+type view struct {
+	Style    template.CSS
+	Title    string
+	Subject  string
+	Verdict  verdict
+	Headline string
+	Reasons  []check
+	Hash     string
+
+	Previous     bool
+	PreviousHash string
+	Compare      []comparison
+
+	In, Out, Rejects, Columns string
+	Usable, UsableShare       string
+	MeanRedshift              string
+	Status                    []reason
+	Clean                     string
+
+	Models  []modelView
+	Charts  []*chart // where rows are, and what the model makes of it
+	Sample  []*chart // magnitudes, selections
+	Errors  []stripGroup
+	Nulls   []nullGroup
+	Units   []unitView
+	More    string // units that are not listed
+	Missing []Missing
+}
+
+// comparison is one line of "since the previous release".
+type comparison struct{ What, Then, Now, Change string }
+
+// unitView is one file.
+type unitView struct {
+	Name, Rows, Rejects, Flagged, Digest string
+}
+
+// maxUnits bounds how many files the page lists.
+const maxUnits = 300
+
+// Write makes the page of a release; before is the previous one, or nil.
+func Write(w io.Writer, r, before *Release) error {
+	v := newView(r, before)
+	var b bytes.Buffer
+	if err := page.Execute(&b, v); err != nil {
+		return fmt.Errorf("making the report: %w", err)
+	}
+	_, err := w.Write(seal(b.Bytes()))
+	return err
+}
+
+func newView(r, before *Release) *view {
+	verdict := judge(r, before)
+	v := &view{
+		Style: template.CSS(pageCSS), Title: title(r), Subject: subject(r),
+		Verdict: verdict, Headline: verdict.Headline(), Reasons: verdict.Reasons(), Missing: r.Missing,
+	}
+	if len(r.Units) == 0 {
+		return v
+	}
+	t := &r.Tally
+	v.Hash = r.ConfigHash.String()
+	v.In, v.Out, v.Rejects, v.Columns = count(r.Input), count(t.Rows), count(t.Rejects), count(int64(len(t.Columns)))
+	have, _ := r.redshifts()
+	v.Usable, v.UsableShare = count(have), share(have, t.Rows)
+	if m := mean(r); m == m {
+		v.MeanRedshift = number(m, 4)
+	}
+	v.Status, v.Clean = statusRows(r, before), fmt.Sprintf("%s (%s)", count(t.Rows-t.Flagged), share(t.Rows-t.Flagged, t.Rows))
+	v.Models, v.Errors, v.Nulls = modelViews(r), errorStrips(r), nullGroups(r)
+	v.charts(r, before)
+	v.units(r)
+	if before != nil && len(before.Units) > 0 {
+		v.Previous, v.PreviousHash, v.Compare = true, before.ConfigHash.String(), compare(r, before)
+	}
+	return v
+}
+
+func title(r *Release) string {
+	if len(r.Units) == 1 {
+		return r.Units[0].Unit
+	}
+	return plural(int64(len(r.Units)), "catalogue")
+}
+
+// subject says what was judged.
+func subject(r *Release) string {
+	switch n := len(r.Units); {
+	case n == 0:
+		return "nothing that could be added up"
+	case n > 1:
+		return fmt.Sprintf("%s to %s", r.Units[0].Unit, r.Units[n-1].Unit)
+	}
+	return ""
+}
+
+// charts draws what the release has.
+func (v *view) charts(r, before *Release) {
+	a := newZAxis(r.octaves())
+	if a.ok {
+		v.Charts = []*chart{redshiftChart(r, before, &a), modulusChart(r, &a), velocityChart(r, &a)}
+		v.Sample = planeCharts(r, &a)
+	}
+	v.Sample = append(v.Sample, luminosityCharts(r)...)
+	v.Sample = append(v.Sample, volumeCharts(r)...)
+}
+
+// units lists the files.
+func (v *view) units(r *Release) {
+	for i, m := range r.Units {
+		if i == maxUnits {
+			v.More = plural(int64(len(r.Units)-maxUnits), "more file")
+			break
+		}
+		v.Units = append(v.Units, unitOf(m))
+	}
+}
+
+func unitOf(m *ledger.Manifest) unitView {
+	return unitView{
+		Name: m.Unit, Rows: count(m.Tally.Rows), Rejects: count(m.Tally.Rejects),
+		Flagged: share(m.Tally.Flagged, m.Tally.Rows), Digest: m.Output.SHA256.String(),
+	}
+}
+
+// compare lists what changed since the previous release.
+func compare(r, before *Release) []comparison {
+	line := func(what string, now, then int64) comparison {
+		return comparison{what, count(then), count(now), change(now - then)}
+	}
+	have, _ := r.redshifts()
+	had, _ := before.redshifts()
+	list := []comparison{
+		line("files", int64(len(r.Units)), int64(len(before.Units))),
+		line("rows", r.Tally.Rows, before.Tally.Rows),
+		line("rejects", r.Tally.Rejects, before.Tally.Rejects),
+		line("rows with a redshift", have, had),
+	}
+	s, ok := shiftOf(before, r)
+	if !ok {
+		return list
+	}
+	if s.Old == s.Old && s.New == s.New {
+		list = append(list, comparison{"mean redshift", fixed(s.Old, 5), fixed(s.New, 5), signed(100*(s.New/s.Old-1), 3) + space + "%"})
+	}
+	list = append(list,
+		comparison{"n(z): largest distance D of the cumulative distributions", "", number(s.D, 3), ""},
+		comparison{"chance of such a D if rows were only added or removed at random", "", probability(s.Nested), ""},
+		comparison{"chance of such a D between independent samples", "", probability(s.Independent), ""},
+		comparison{"rows that must have changed their bin of redshift", "", "≥ " + count(s.Moved), ""})
+	return list
+}
