@@ -277,7 +277,7 @@ func (s *CSV) Next(ctx context.Context) (*table.Chunk, error) {
 		rows++
 	}
 	c.rows.reset()
-	c.Chunk = table.Chunk{Seq: s.seq, Rows: rows, Raw: raw, Line: s.line, Offset: s.offset, Cols: c}
+	c.Chunk = table.Chunk{Seq: s.seq, Rows: rows, Raw: raw, Line: s.line, Offset: s.offset, Consumed: s.feed.taken, Cols: c}
 	s.seq++
 	s.line += int64(ends)
 	s.offset += int64(n)

@@ -22,6 +22,7 @@ type feed struct {
 	quit  chan struct{} // closed by Close
 	gone  chan struct{} // closed when the reading goroutine has left
 	left  []byte        // of the current block
+	taken int64         // bytes that Read has given
 	block *sharedBlock
 	err   error // what ended the input: io.EOF or the error of reading
 
@@ -148,6 +149,7 @@ func (f *feed) Read(p []byte) (int, error) {
 	}
 	n := copy(p, f.left)
 	f.left = f.left[n:]
+	f.taken += int64(n)
 	return n, nil
 }
 

@@ -68,7 +68,7 @@ func TestKilled(t *testing.T) {
 	usual := time.Since(start)
 	want := published(t, "out")
 	killed, left := 0, 0
-	for range 15 {
+	for range 10 {
 		os.RemoveAll("out")
 		c, _ := program(t, "run", "job.toml", "--quiet")
 		if err := c.Start(); err != nil {
@@ -95,7 +95,7 @@ func TestKilled(t *testing.T) {
 	if killed == 0 {
 		t.Error("no run was killed: the delays are too long")
 	}
-	t.Logf("%d of 15 runs were killed, and left %d temporaries", killed, left)
+	t.Logf("%d of 10 runs were killed, and left %d temporaries", killed, left)
 }
 
 // TestTerminated: SIGTERM ends a run within a second, exit 143, wherever it is
