@@ -1,14 +1,10 @@
 package pipeline
 
 import (
-	"bytes"
 	"context"
-	"encoding/csv"
 	"errors"
 	"fmt"
-	"os"
 	"path/filepath"
-	"strconv"
 	"strings"
 	"time"
 
@@ -136,65 +132,6 @@ func (r *runner) lock(ctx context.Context, u *Unit) (*publish.Lock, error) {
 	return lock, err
 }
 
-// upToDate reports whether the output stands, made by the same job of the same
-// input; the outcome then says so.
-func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
-	if u.Input == Standard {
-		return false, nil
-	}
-	state, err := publish.Look(r.options.FS, u.Output)
-	if err != nil || !state.Whole {
-		return false, err
-	}
-	m, err := ledger.Parse(state.Manifest)
-	if err != nil || m.ConfigHash != r.plan.hash || m.Unit != u.ID {
-		return false, nil
-	}
-	same, err := r.sameFiles(u, m)
-	if err != nil || !same {
-		return false, err
-	}
-	o.Result, o.Size = UpToDate, m.Output.Size
-	o.count(&m.Tally)
-	r.watch.Advance(0, u.Size)
-	return true, nil
-}
-
-// sameFiles compares input and output with what the manifest says of them: by
-// size and quick fingerprint, or all of their bytes; and the output must not
-// be older than the input.
-func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (bool, error) {
-	in, err := os.Stat(u.Input)
-	if err != nil {
-		return false, fault.NoInput.Wrap(err)
-	}
-	out, err := os.Stat(u.Output)
-	if err != nil || out.ModTime().Before(in.ModTime()) || in.Size() != m.Input.Size {
-		return false, nil
-	}
-	for path, info := range map[string]publish.FileInfo{u.Input: m.Input.FileInfo, u.Output: m.Output.FileInfo} {
-		same, err := r.sameFile(path, info)
-		if err != nil || !same {
-			return false, err
-		}
-	}
-	return true, nil
-}
-
-func (r *runner) sameFile(path string, info publish.FileInfo) (bool, error) {
-	if !r.options.FullCheck {
-		sum, err := quick(path, info.Size)
-		return err == nil && sum == info.Quick, err
-	}
-	f, err := os.Open(path)
-	if err != nil {
-		return false, fault.NoInput.Wrap(err)
-	}
-	defer f.Close()
-	sum, err := publish.Full(f, info.Size)
-	return err == nil && sum == info.SHA256, fault.IO.Wrap(err)
-}
-
 // work is one unit while it is done.
 type work struct {
 	*runner
@@ -271,17 +208,6 @@ func (w *work) manifest(files publish.Record) ([]byte, error) {
 		}
 	}
 	return ledger.Encode(m)
-}
-
-// quick is the quick fingerprint of a file of known size.
-func quick(path string, size int64) (publish.Digest, error) {
-	f, err := os.Open(path)
-	if err != nil {
-		return publish.Digest{}, fault.NoInput.Wrap(err)
-	}
-	defer f.Close()
-	sum, err := publish.Quick(f, size)
-	return sum, fault.IO.Wrap(err)
 }
 
 // copy moves the rows.
@@ -374,61 +300,4 @@ func (w *work) finishChecks() error {
 		}
 	}
 	return nil
-}
-
-// reject notes a record that has no row, and fails beyond the job's limit.
-func (w *work) reject(r *table.Reject) error {
-	o := w.outcome
-	if o.Rejects++; o.First == nil {
-		first := *r
-		o.First = &first
-	}
-	if limit := w.plan.Job.MaxRejects; o.Rejects > limit {
-		return fault.Data.Errorf("%s:%d: %s; that makes %d rejects, and %s is %d: mend the file, or raise the limit to keep the rest and find such records in %s",
-			w.unit.Name(), r.Line, r.Reason, o.Rejects, w.plan.Job.Place("limits.max_rejects"), limit, w.rejectsPlace())
-	}
-	if w.rejects == nil { // standard output: they go where messages go
-		_, err := fmt.Fprintf(w.options.Stderr, "catenrich: %s:%d: %s: %q\n", w.unit.Name(), r.Line, r.Reason, r.Record)
-		return fault.IO.Wrap(err)
-	}
-	return w.rejects.add(w.unit.ID, r)
-}
-
-// rejectsPlace is where records that have no row can be found.
-func (w *work) rejectsPlace() string {
-	if w.rejects == nil {
-		return "standard error"
-	}
-	return w.unit.Output + rejectsSuffix
-}
-
-// rejects writes the sidecar of records that have no row, made when the first
-// of them comes.
-type rejects struct {
-	create func() (table.Output, error)
-	out    table.Output
-	text   bytes.Buffer
-	csv    *csv.Writer
-}
-
-// rejectsHeader names the sidecar's columns.
-var rejectsHeader = []string{"file", "line", "byte_offset", "reason", "record"}
-
-func (r *rejects) add(unit string, reject *table.Reject) error {
-	if r.out == nil {
-		out, err := r.create()
-		if err != nil {
-			return err
-		}
-		r.out, r.csv = out, csv.NewWriter(&r.text)
-		r.csv.Write(rejectsHeader)
-	}
-	r.csv.Write([]string{unit, strconv.FormatInt(reject.Line, 10), strconv.FormatInt(reject.Offset, 10), reject.Reason, string(reject.Record)})
-	r.csv.Flush()
-	if err := r.csv.Error(); err != nil {
-		return err
-	}
-	_, err := r.out.Write(r.text.Bytes())
-	r.text.Reset()
-	return err
 }
