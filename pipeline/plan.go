@@ -66,15 +66,18 @@ func (p *Plan) Size() int64 {
 // Nothing is opened and nothing written.
 func NewPlan(j *job.Job, formats Formats) (*Plan, error) {
 	p := &Plan{Job: j}
+	if err := p.findUnits(formats); err != nil {
+		return nil, err
+	}
+	if len(p.Units) == 1 && p.Units[0].out != p.Units[0].in {
+		j.Settings.Output.Format = p.Units[0].out.Name // the output's suffix decided it, and it decides bytes
+	}
 	var err error
 	if p.Settings, err = j.Settings.Canonical(); err != nil {
 		return nil, err
 	}
 	p.hash = sha256.Sum256(p.Settings)
 	p.ConfigHash = p.hash.String()
-	if err := p.findUnits(formats); err != nil {
-		return nil, err
-	}
 	if err := p.checkPaths(); err != nil {
 		return nil, fault.Config.Wrap(err)
 	}
@@ -165,7 +168,7 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 // sidecar reports whether a path names a file that only catenrich writes, so
 // that "*.csv" does not take the rejects of an earlier run for a catalogue.
 func (p *Plan) sidecar(path string) bool {
-	return strings.HasSuffix(path, rejectsSuffix) || strings.Contains(filepath.ToSlash(path), ".catenrich/")
+	return strings.HasSuffix(path, rejectsSuffix) || isReport(path) || strings.Contains(filepath.ToSlash(path), ".catenrich/")
 }
 
 // bare strips the operation and path that fs adds to errors, since the message

@@ -224,10 +224,23 @@ func (r *resolver) output(s *OutputSettings) {
 		r.fail("output.float", "is %d, want 64 or 32", s.Float)
 	}
 	s.Encoding = r.choice("output.encoding", out.Encoding, "", "byte_stream_split", "plain")
-	s.Codec = r.choice("output.codec", out.Codec, "", "zstd", "snappy", "none")
+	s.Codec = r.choice("output.codec", out.Codec, compression(out.File), "zstd", "snappy", "none")
 	if s.Level < 0 || s.Level > 22 {
 		r.fail("output.level", "is %d, want 1 to 22, or 0 for the fastest", s.Level)
 	}
+}
+
+// compression is what the suffix of an output file asks for: it decides bytes,
+// and so belongs to the settings. In a directory every output has the suffix
+// of its unit.
+func compression(file string) string {
+	switch strings.ToLower(filepath.Ext(file)) {
+	case ".gz":
+		return "gzip"
+	case ".zst":
+		return "zst"
+	}
+	return ""
 }
 
 func (r *resolver) columns(s *Settings) {
