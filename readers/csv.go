@@ -5,7 +5,8 @@
 // [OpenCSV] reads delimited text. Begin there: csv.go has the life of a chunk,
 // csv_head.go the header, csv_cut.go where the text is cut, csv_decode.go how
 // records become columns, csv_locate.go the way back to one row; feed.go reads
-// ahead and digests.
+// ahead and digests. [OpenParquet] reads Parquet (parquet.go), [OpenFITS] a
+// table of a FITS file (fits.go).
 package readers
 
 import (

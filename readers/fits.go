@@ -248,7 +248,7 @@ func (f *FITS) Digest() (size int64, sum [32]byte, ok bool) {
 	if f.pending != io.EOF || f.stream == nil {
 		return 0, sum, false
 	}
-	if f.stream.drain() != nil {
+	if f.start(context.Background()) != nil || f.stream.drain() != nil {
 		return 0, sum, false
 	}
 	return f.stream.feed.Digest()

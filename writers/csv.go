@@ -4,7 +4,9 @@
 // or of jobs.
 //
 // [NewCSV] appends fields to delimited text: csv.go has the records,
-// compress.go the members of a compressed output.
+// compress.go the members of a compressed output. [NewParquet] grafts columns
+// onto a Parquet file (parquet.go), [NewFITS] extends the rows of a FITS table
+// (fits.go).
 package writers
 
 import (

@@ -33,7 +33,6 @@ type FITS struct {
 	header *fitshead.Extended
 	sum    fitshead.Sum // of the data so far
 	out    fitsOutput
-	at     int64 // of the header, for patches
 }
 
 // A fitsOutput is the uncompressed output. What was kept can be patched.

@@ -193,6 +193,24 @@ func TestFITSGzip(t *testing.T) {
 	}
 }
 
+// TestFITSWideHeader patches sums that stand beyond the first stored block of a
+// compressed header.
+func TestFITSWideHeader(t *testing.T) {
+	in := fitsOf(readertest.Random(3, 650), sumCards...)
+	want, _ := enrichFITS(t, in, table.Spec{})
+	got, _ := enrichFITS(t, in, table.Spec{Codec: "gzip"})
+	if !bytes.Equal(unzip(t, got), want) {
+		t.Error("the compressed output holds another file than the plain one")
+	}
+	u := fitstest.Split(t, want)[2]
+	if at := bytes.Index(u.Header, []byte("CHECKSUM=")); at < storedSize {
+		t.Fatalf("CHECKSUM stands at %d, within the first stored block", at)
+	}
+	if sum := fitshead.SumOf(u.Header).Join(fitshead.SumOf(u.Data)).Words; sum != 0xffffffff {
+		t.Errorf("the unit adds up to %#x, want all ones", sum)
+	}
+}
+
 // TestJoinedCRC compares with the CRC of the whole.
 func TestJoinedCRC(t *testing.T) {
 	r := rand.New(rand.NewPCG(5, 6))
