@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"path/filepath"
 	"slices"
 
 	"catenrich/cosmo"
@@ -174,4 +175,33 @@ func (r *resolver) recordedSelection(s *SelectionSettings) SelectionPlan {
 		p.Limits = append(p.Limits, plan)
 	}
 	return p
+}
+
+// SideFiles lists the SEDs, bandpasses and K tables that the file names, with
+// paths as they are from the working directory.
+func (f *File) SideFiles() []string {
+	var list []string
+	add := func(k *KCorrection) {
+		if k == nil {
+			return
+		}
+		for _, name := range []string{k.Table, k.SED, k.Bandpass, k.RestBandpass, k.ZeroPointSED} {
+			if name != "" && !filepath.IsAbs(name) {
+				name = filepath.Join(filepath.Dir(f.Name), name)
+			}
+			if name != "" {
+				list = append(list, name)
+			}
+		}
+	}
+	for i := range f.Band {
+		add(f.Band[i].KCorrection)
+	}
+	for i := range f.Selection {
+		add(f.Selection[i].KCorrection)
+		for k := range f.Selection[i].Bands {
+			add(f.Selection[i].Bands[k].KCorrection)
+		}
+	}
+	return list
 }

@@ -1,0 +1,74 @@
+package prove
+
+import (
+	"errors"
+	"io/fs"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+
+	"catenrich/internal/fault"
+	"catenrich/internal/publish"
+)
+
+// Targets lists the outputs that paths mean, each once: a file stands for
+// itself, a manifest for its output, a directory for every output with a
+// manifest in or below it, the missing ones too. A directory without any is a
+// fault.NoInput.
+func Targets(paths []string) ([]string, error) {
+	var all []string
+	for _, path := range paths {
+		info, err := os.Stat(path)
+		if err != nil || !info.IsDir() {
+			all = append(all, outputOf(path))
+			continue
+		}
+		below, err := outputsIn(path)
+		if err != nil {
+			return nil, fault.NoInput.Wrap(err)
+		}
+		if len(below) == 0 {
+			return nil, fault.NoInput.Errorf("%s: no output with a manifest is in it", path)
+		}
+		all = append(all, below...)
+	}
+	seen := make(map[string]bool)
+	return slices.DeleteFunc(all, func(path string) bool {
+		again := seen[path]
+		seen[path] = true
+		return again
+	}), nil
+}
+
+// outputOf takes the ending of a manifest off a path.
+func outputOf(path string) string {
+	for _, ending := range []string{publish.ManifestPath(""), publish.PendingPath("")} {
+		if output, ok := strings.CutSuffix(path, ending); ok && output != "" {
+			return output
+		}
+	}
+	return path
+}
+
+// outputsIn lists the outputs in and below a directory, in order.
+func outputsIn(dir string) ([]string, error) {
+	var found []string
+	err := filepath.WalkDir(dir, func(path string, d fs.DirEntry, err error) error {
+		if err != nil {
+			if errors.Is(err, fs.ErrNotExist) {
+				return nil
+			}
+			return err
+		}
+		if d.IsDir() && d.Name() == publish.LockDir {
+			return filepath.SkipDir
+		}
+		if output := outputOf(path); output != path {
+			found = append(found, output)
+		}
+		return nil
+	})
+	slices.Sort(found)
+	return slices.Compact(found), err
+}
