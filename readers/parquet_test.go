@@ -14,6 +14,7 @@ import (
 
 	"github.com/apache/arrow-go/v18/arrow/decimal128"
 	"github.com/apache/arrow-go/v18/parquet"
+	"github.com/apache/arrow-go/v18/parquet/compress"
 	"github.com/apache/arrow-go/v18/parquet/file"
 	"github.com/apache/arrow-go/v18/parquet/schema"
 
@@ -302,6 +303,95 @@ func TestParquetSlices(t *testing.T) {
 	}
 	if want != rows {
 		t.Errorf("%d rows, want %d", want, rows)
+	}
+}
+
+// TestParquetLongPages: pages of many slices, in every codec, with nulls and
+// without, numbers and text.
+func TestParquetLongPages(t *testing.T) {
+	const rows = 4*ParquetSlice + 77
+	opt, req := parquet.Repetitions.Optional, parquet.Repetitions.Required
+	text, err := schema.NewPrimitiveNodeLogical("text", opt, schema.StringLogicalType{}, parquet.Types.ByteArray, -1, -1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	fields := schema.FieldList{schema.NewFloat64Node("z", opt, -1), schema.NewInt64Node("id", req, -1), text}
+	root := schema.MustGroup(schema.NewGroupNode("schema", req, fields, -1))
+	var z []float64
+	var words []parquet.ByteArray
+	ids, defs := make([]int64, rows), make([]int16, rows)
+	for i := range ids {
+		if ids[i] = int64(i); i%7 != 3 {
+			z, words, defs[i] = append(z, float64(i)/3), append(words, strconv.AppendInt([]byte("word "), int64(i), 10)), 1
+		}
+	}
+	codecs := compress.Codecs
+	for _, codec := range []compress.Compression{codecs.Uncompressed, codecs.Snappy, codecs.Gzip, codecs.Zstd, codecs.Brotli, codecs.Lz4Raw} {
+		for _, version := range []parquet.DataPageVersion{parquet.DataPageV1, parquet.DataPageV2} {
+			path := filepath.Join(t.TempDir(), "long.parquet")
+			f, err := os.Create(path)
+			if err != nil {
+				t.Fatal(err)
+			}
+			w := file.NewParquetWriter(f, root, file.WithWriterProps(parquet.NewWriterProperties(parquet.WithCompression(codec), parquet.WithDictionaryDefault(false),
+				parquet.WithDataPageSize(64<<20), parquet.WithDataPageVersion(version), parquet.WithCompressionLevel(1))))
+			g := w.AppendRowGroup()
+			for range fields {
+				c, err := g.NextColumn()
+				if err != nil {
+					t.Fatal(err)
+				}
+				switch c := c.(type) {
+				case *file.Float64ColumnChunkWriter:
+					c.WriteBatch(z, defs, nil)
+				case *file.Int64ColumnChunkWriter:
+					c.WriteBatch(ids, nil, nil)
+				case *file.ByteArrayColumnChunkWriter:
+					c.WriteBatch(words, defs, nil)
+				}
+				c.Close()
+			}
+			g.Close()
+			if err := w.Close(); err != nil {
+				t.Fatal(err)
+			}
+			checkLongPages(t, path, rows)
+		}
+	}
+}
+
+func checkLongPages(t *testing.T, path string, rows int64) {
+	t.Helper()
+	p, err := OpenParquet(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer p.Close()
+	if err := p.Select([]table.Want{{Field: 0, As: table.Float}, {Field: 1, As: table.Float}, {Field: 2, As: table.Bytes}}, nil); err != nil {
+		t.Fatal(err)
+	}
+	var b table.Batch
+	row := int64(0)
+	for {
+		c, err := p.Next(context.Background())
+		if err == io.EOF {
+			break
+		}
+		if err := p.Decode(c, &b); err != nil {
+			t.Fatal(err)
+		}
+		for i := range b.Rows {
+			null := row%7 == 3
+			word := "word " + strconv.FormatInt(row, 10)
+			if b.In[1].Float[i] != float64(row) || null != (b.In[0].State[i] == table.Missing) || !null && b.In[0].Float[i] != float64(row)/3 ||
+				null != (b.In[2].Bytes[i] == nil) || !null && string(b.In[2].Bytes[i]) != word {
+				t.Fatalf("row %d: %v, %v, %q", row, b.In[0].Float[i], b.In[1].Float[i], b.In[2].Bytes[i])
+			}
+			row++
+		}
+	}
+	if row != rows {
+		t.Errorf("%d rows of %d", row, rows)
 	}
 }
 

@@ -3,131 +3,10 @@ package parquetfoot
 import (
 	"bytes"
 	"errors"
-	"fmt"
 	"io"
-	"os"
-	"path/filepath"
 	"strings"
 	"testing"
 )
-
-// handmade builds a footer that no library writes: annotations that came to
-// the format late or never, and a field of unknown id in every structure.
-func handmade(withOrders, withEntries bool) []byte {
-	unknown := func(e *Encoder) {
-		e.Struct(900)
-		e.Binary(1, []byte("from the future"))
-		e.I64s(7, []int64{-1, 1 << 60})
-		e.End()
-	}
-	var e Encoder
-	e.I32(1, 2)
-	leaves := []func(){
-		func() { e.Struct(10); e.Struct(15); e.End(); e.End() },                                   // FLOAT16
-		func() { e.Struct(10); e.Struct(17); e.Binary(1, []byte("OGC:CRS84")); e.End(); e.End() }, // GEOMETRY
-		func() { e.Struct(10); e.Struct(99); e.I32(1, 5); e.End(); e.End() },                      // nobody's
-		func() {
-			e.Struct(10)
-			e.Struct(5)
-			e.I32(1, 3)
-			e.I32(2, 9)
-			e.End()
-			e.End()
-		}, // DECIMAL(9,3)
-		func() {
-			e.Struct(10)
-			e.Struct(10)
-			e.B = append(e.B, 0x13, 64, 0x12)
-			e.last = 2
-			e.End()
-			e.End()
-		}, // INTEGER(64, unsigned)
-	}
-	physical := []Physical{FixedLenByteArray, ByteArray, Double, Int32, Int64}
-	e.Structs(2, len(leaves)+1)
-	e.Element()
-	e.Binary(4, []byte("root"))
-	e.I32(5, int32(len(leaves)))
-	unknown(&e)
-	e.End()
-	for i, annotate := range leaves {
-		e.Element()
-		e.I32(1, int32(physical[i]))
-		if physical[i] == FixedLenByteArray {
-			e.I32(2, 2)
-		}
-		e.I32(3, int32(i%2))
-		e.Binary(4, fmt.Appendf(nil, "c%d", i))
-		e.I32(9, int32(i+1))
-		annotate()
-		unknown(&e)
-		e.End()
-	}
-	e.I64(3, 20)
-	e.Structs(4, 2)
-	for range 2 {
-		e.Element()
-		e.Structs(1, len(leaves))
-		for i := range leaves {
-			e.Element()
-			e.I64(2, 0)
-			e.Struct(3)
-			e.I32(1, int32(physical[i]))
-			e.I32s(2, 0, 3)
-			e.Binaries(3, [][]byte{fmt.Appendf(nil, "c%d", i)})
-			e.I32(4, 0)
-			e.I64(5, 10)
-			e.I64(6, 100)
-			e.I64(7, 90)
-			e.I64(9, 4)
-			e.Struct(12)
-			e.Binary(5, []byte{1})
-			e.field(7, typeTrue) // is_max_value_exact
-			e.End()
-			e.I64(14, 77) // bloom_filter_offset
-			e.I32(15, 32) // bloom_filter_length
-			e.Struct(16)  // size_statistics
-			e.I64(1, 5)
-			e.End()
-			unknown(&e)
-			e.End()
-			unknown(&e)
-			e.End()
-		}
-		e.I64(2, 500)
-		e.I64(3, 10)
-		e.I64(5, 4)
-		e.I64(6, 450)
-		e.field(7, typeI16)
-		e.B = appendInteger(e.B, 1)
-		unknown(&e)
-		e.End()
-	}
-	if withEntries {
-		e.Structs(5, 2)
-		e.Element()
-		e.Binary(1, []byte("no value"))
-		e.End()
-		e.Element()
-		e.Binary(1, []byte("k"))
-		e.Binary(2, []byte("v"))
-		unknown(&e)
-		e.End()
-	}
-	e.Binary(6, []byte("by hand"))
-	if withOrders {
-		e.Structs(7, len(leaves))
-		for range leaves {
-			e.Element()
-			e.Struct(1)
-			e.End()
-			e.End()
-		}
-	}
-	unknown(&e)
-	e.End()
-	return e.B
-}
 
 const handmadeEnd = 1000
 
@@ -337,60 +216,37 @@ func TestTruncatedFooterIsAnError(t *testing.T) {
 	}
 }
 
-// FuzzExtend: whatever parses can be extended, and then parses again with
-// everything that it had.
-func FuzzExtend(f *testing.F) {
-	f.Add(handmade(true, true))
-	f.Add(handmade(false, false))
-	files, _ := filepath.Glob("../../testdata/small/*.parquet")
-	for _, name := range files {
-		b, err := os.ReadFile(name)
-		if err != nil {
-			f.Fatal(err)
-		}
-		n := len(b) - 8
-		size := int(b[n]) | int(b[n+1])<<8 | int(b[n+2])<<16
-		f.Add(b[n-size : n])
+// TestMovedIndexes: only the offsets of page indexes change in old chunks.
+func TestMovedIndexes(t *testing.T) {
+	raw := handmadeFooter(true, true, true)
+	f := parse(t, raw)
+	chunks, err := f.Chunks(0, nil)
+	if err != nil || chunks[0].OffsetIndex != (Place{100, 20}) || chunks[4].ColumnIndex != (Place{200, 30}) || !f.Indexed {
+		t.Fatalf("%+v, indexed %v, %v", chunks[0], f.Indexed, err)
 	}
-	f.Fuzz(func(t *testing.T, raw []byte) {
-		foot, err := Parse(raw, 1<<40)
-		if err != nil {
-			return
+	x := none(f)
+	x.Group = func(int) (GroupExtension, error) {
+		moved := make([]MovedIndexes, len(chunks))
+		for i := range moved {
+			moved[i] = MovedIndexes{OffsetIndex: 600 + int64(i), ColumnIndex: 700 + int64(i)}
 		}
-		var same, more bytes.Buffer
-		if _, err := foot.Extend(&same, none(foot)); err != nil {
-			t.Fatalf("extending by nothing: %v", err)
+		return GroupExtension{Moved: moved}, nil
+	}
+	var out bytes.Buffer
+	if _, err := f.Extend(&out, x); err != nil {
+		t.Fatal(err)
+	}
+	g := parse(t, out.Bytes())
+	after, err := g.Chunks(1, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i := range after {
+		if after[i].OffsetIndex != (Place{600 + int64(i), 20}) || after[i].ColumnIndex != (Place{700 + int64(i), 30}) {
+			t.Errorf("chunk %d: %+v", i, after[i])
 		}
-		if _, err := Parse(same.Bytes(), 1<<40); err != nil {
-			t.Fatalf("what was extended by nothing does not parse: %v", err)
-		}
-		if _, err := foot.Extend(&more, graft(foot)); err != nil {
-			t.Fatal(err)
-		}
-		g, err := Parse(more.Bytes(), 1<<40)
-		if err != nil {
-			t.Fatalf("the extended footer does not parse: %v", err)
-		}
-		if len(g.Leaves) != len(foot.Leaves)+2 || g.Rows != foot.Rows || g.Groups() != foot.Groups() {
-			t.Fatalf("%d leaves became %d", len(foot.Leaves), len(g.Leaves))
-		}
-		for i := range foot.Leaves {
-			if foot.Leaves[i] != g.Leaves[i] {
-				t.Fatalf("leaf %+v became %+v", foot.Leaves[i], g.Leaves[i])
-			}
-		}
-		for i := range foot.groups {
-			chunks, err := foot.Chunks(i, nil)
-			if err != nil {
-				t.Fatal(err)
-			}
-			leaves := make([]int, len(chunks))
-			for l := range leaves {
-				leaves[l] = l
-			}
-			if _, err := Parse(foot.Subset(i, leaves, chunks), 1<<40); err != nil && foot.Groups() > 0 {
-				t.Fatalf("the subset of row group %d does not parse: %v", i, err)
-			}
-		}
-	})
+	}
+	if was, is := bytes.Count(raw, []byte("future")), bytes.Count(out.Bytes(), []byte("future")); was != is {
+		t.Errorf("%d unknown fields became %d", was, is)
+	}
 }
