@@ -55,6 +55,8 @@ type Summary struct {
 	Rows, Rejects, Nulls, Size       int64
 	Bits                             ledger.Bits
 	Elapsed                          time.Duration
+
+	Report, Verdict string // where the report is and what it says; "" without one
 }
 
 // add counts one outcome.

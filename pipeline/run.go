@@ -23,6 +23,7 @@ import (
 	"catenrich/internal/publish"
 	"catenrich/internal/table"
 	"catenrich/pipeline/columns"
+	"catenrich/pipeline/report"
 )
 
 // Options say how a run is carried out. None of them changes an output byte.
@@ -32,6 +33,9 @@ type Options struct {
 	Replace   bool  // replace outputs that are not ours
 	Wait      bool  // wait for another run's lock, instead of an error
 	FullCheck bool  // believe that a unit is up to date only after reading all of it
+	NoReport  bool  // make no report
+
+	Previous *report.Release // what the report compares with; may be nil
 
 	Stdin          io.ReadCloser
 	Stdout, Stderr io.Writer
@@ -50,6 +54,9 @@ const (
 func Run(ctx context.Context, p *Plan, o Options, watch Observer) (*Summary, error) {
 	start := time.Now()
 	r := newRunner(p, o, watch)
+	if err := r.mayReport(); err != nil {
+		return nil, err
+	}
 	defer r.limitMemory()()
 	slots := semaphore.NewWeighted(int64(r.options.Workers))
 	outcomes := make([]Outcome, len(p.Units))
@@ -69,7 +76,8 @@ func Run(ctx context.Context, p *Plan, o Options, watch Observer) (*Summary, err
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
-	return summarize(outcomes, time.Since(start))
+	summary, err := summarize(outcomes, time.Since(start))
+	return summary, errors.Join(err, r.report(outcomes, summary))
 }
 
 // summarize adds up the outcomes, and joins the errors in unit order.
@@ -98,6 +106,8 @@ type runner struct {
 	batches sync.Pool
 	warned  sync.Once // of a filesystem without locks
 	swept   sync.Map  // directories whose abandoned temporaries were removed
+
+	retracted sync.Once // of the report of an earlier run
 }
 
 func newRunner(p *Plan, o Options, watch Observer) *runner {

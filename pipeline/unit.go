@@ -67,6 +67,9 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 	if err := work.into(ctx, release); err != nil {
 		return err
 	}
+	if err := r.retractReport(); err != nil {
+		return err
+	}
 	return release.Commit(work.manifest)
 }
 

@@ -16,6 +16,7 @@ import (
 	"catenrich/internal/status"
 	"catenrich/pipeline"
 	"catenrich/pipeline/job"
+	"catenrich/pipeline/report"
 )
 
 // runFlags are the flags of run that are no setting of the job.
@@ -27,6 +28,9 @@ type runFlags struct {
 	wait    bool
 	check   string
 	saveJob string
+
+	noReport bool
+	previous string
 }
 
 func (a *app) runCommand() *cobra.Command {
@@ -53,6 +57,8 @@ under its name, or not at all.`,
 	c.Flags().BoolVarP(&flags.quiet, "quiet", "q", false, "print warnings and errors only")
 	c.Flags().StringVar(&flags.check, "check", "quick", "how to see that a unit is up to date: quick, or full, which reads everything")
 	c.Flags().StringVar(&flags.saveJob, "save-job", "", "also write the job file that the flags amount to")
+	c.Flags().BoolVar(&flags.noReport, "no-report", false, "make no report.html in the output directory")
+	c.Flags().StringVar(&flags.previous, "previous", "", "earlier release that the report compares with: a directory or a manifest")
 	settings.register(c.Flags())
 	return c
 }
@@ -104,7 +110,7 @@ func (a *app) execute(ctx context.Context, plan *pipeline.Plan, options pipeline
 // options checks the flags, all at once.
 func (f *runFlags) options() (pipeline.Options, error) {
 	var wrong []string
-	o := pipeline.Options{Workers: f.workers, Replace: f.replace, Wait: f.wait, FullCheck: f.check == "full"}
+	o := pipeline.Options{Workers: f.workers, Replace: f.replace, Wait: f.wait, FullCheck: f.check == "full", NoReport: f.noReport}
 	if f.workers < 1 || f.workers > 1024 {
 		wrong = append(wrong, fmt.Sprintf("--workers is %d, want 1 to 1024", f.workers))
 	}
@@ -121,7 +127,11 @@ func (f *runFlags) options() (pipeline.Options, error) {
 	if len(wrong) > 0 {
 		return o, fault.Usage.Errorf("%s", strings.Join(wrong, "\n"))
 	}
-	return o, nil
+	var err error
+	if f.previous != "" {
+		o.Previous, err = report.Load(f.previous)
+	}
+	return o, err
 }
 
 // minMemory is the least that --memory takes: one chunk must fit.
@@ -176,5 +186,8 @@ func summaryText(p *pipeline.Plan, s *pipeline.Summary) string {
 		}
 	}
 	fmt.Fprintf(&b, "config  %s\n", p.ConfigHash)
+	if s.Report != "" {
+		fmt.Fprintf(&b, "report  %s: %s\n", s.Report, s.Verdict)
+	}
 	return b.String()
 }

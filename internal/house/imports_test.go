@@ -37,8 +37,9 @@ var allowed = map[string][]string{
 	"pipeline/ledger":  {"internal/"},
 	"pipeline/columns": {"cosmo", "cosmo/", "internal/", "pipeline/job", "pipeline/ledger"},
 	"pipeline/demo":    {"cosmo", "cosmo/", "internal/"},
-	"pipeline":         {"cosmo", "cosmo/", "internal/", "pipeline/job", "pipeline/columns", "pipeline/ledger"},
-	"pipeline/prove":   {"cosmo", "cosmo/", "internal/", "pipeline", "pipeline/job", "pipeline/columns", "pipeline/ledger"},
+	"pipeline":         {"cosmo", "cosmo/", "internal/", "pipeline/job", "pipeline/columns", "pipeline/ledger", "pipeline/report"},
+	"pipeline/report":  {"cosmo", "cosmo/", "internal/", "pipeline/job", "pipeline/columns", "pipeline/ledger"},
+	"pipeline/prove":   {"cosmo", "cosmo/", "internal/", "pipeline", "pipeline/job", "pipeline/columns", "pipeline/ledger", "pipeline/report"},
 }
 
 func TestImportsPointDown(t *testing.T) {

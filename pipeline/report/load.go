@@ -24,6 +24,7 @@ const (
 // is damaged, or whose publication was interrupted, is listed as missing.
 // Without any manifest it is a fault of class [fault.NoInput].
 func Load(path string) (*Release, error) {
+	var b Builder
 	info, err := os.Stat(path)
 	if err != nil {
 		return nil, fault.NoInput.Wrap(err)
@@ -36,21 +37,23 @@ func Load(path string) (*Release, error) {
 		if err != nil {
 			return nil, err
 		}
-		return New([]*ledger.Manifest{m}, nil)
+		if err := b.Add(m); err != nil {
+			return nil, err
+		}
+		return b.Release()
 	}
-	units, missing, err := walk(path)
-	if err != nil {
+	if err := walk(path, &b); err != nil {
 		return nil, err
 	}
-	if len(units)+len(missing) == 0 {
+	if len(b.groups)+len(b.missing) == 0 {
 		return nil, fault.NoInput.Errorf("%s holds no manifest (*%s): name the directory that `catenrich run` wrote to", path, manifestSuffix)
 	}
-	return New(units, missing)
+	return b.Release()
 }
 
 // walk finds the manifests below dir.
-func walk(dir string) (units []*ledger.Manifest, missing []Missing, err error) {
-	err = filepath.WalkDir(dir, func(path string, e fs.DirEntry, err error) error {
+func walk(dir string, b *Builder) error {
+	err := filepath.WalkDir(dir, func(path string, e fs.DirEntry, err error) error {
 		if err != nil {
 			return err
 		}
@@ -60,7 +63,7 @@ func walk(dir string) (units []*ledger.Manifest, missing []Missing, err error) {
 		}
 		name = filepath.ToSlash(name)
 		if output, ok := strings.CutSuffix(name, pendingSuffix); ok {
-			missing = append(missing, Missing{output, "its publication was interrupted: run the job again"})
+			b.Miss(output, "its publication was interrupted: run the job again")
 			return nil
 		}
 		output, ok := strings.CutSuffix(name, manifestSuffix)
@@ -70,15 +73,14 @@ func walk(dir string) (units []*ledger.Manifest, missing []Missing, err error) {
 		m, err := read(path)
 		switch {
 		case fault.Of(err) == fault.Data:
-			missing = append(missing, Missing{output, "its manifest is damaged, or was not written by this program"})
+			b.Miss(output, "its manifest is damaged, or was not written by this program")
 			return nil
 		case err != nil:
 			return err
 		}
-		units = append(units, m)
-		return nil
+		return b.Add(m)
 	})
-	return units, missing, fault.NoInput.Wrap(err)
+	return fault.NoInput.Wrap(err)
 }
 
 // read reads one manifest.

@@ -6,8 +6,6 @@ import (
 	"fmt"
 	"html/template"
 	"io"
-
-	"catenrich/pipeline/ledger"
 )
 
 //go:embed page.html
@@ -71,11 +69,17 @@ func Write(w io.Writer, r, before *Release) error {
 	return err
 }
 
+// Headline is what the page of a release says at its top.
+func (r *Release) Headline(before *Release) string {
+	v := judge(r, before)
+	return v.Headline()
+}
+
 func newView(r, before *Release) *view {
 	verdict := judge(r, before)
 	v := &view{
 		Style: template.CSS(pageCSS), Title: title(r), Subject: subject(r),
-		Verdict: verdict, Headline: verdict.Headline(), Reasons: verdict.Reasons(), Missing: r.Missing,
+		Verdict: verdict, Headline: verdict.Headline(), Reasons: verdict.Reasons(), Missing: r.Missing[:min(len(r.Missing), maxUnits)],
 	}
 	if len(r.Units) == 0 {
 		return v
@@ -100,7 +104,7 @@ func newView(r, before *Release) *view {
 
 func title(r *Release) string {
 	if len(r.Units) == 1 {
-		return r.Units[0].Unit
+		return r.Units[0].ID
 	}
 	return plural(int64(len(r.Units)), "catalogue")
 }
@@ -111,7 +115,7 @@ func subject(r *Release) string {
 	case n == 0:
 		return "nothing that could be added up"
 	case n > 1:
-		return fmt.Sprintf("%s to %s", r.Units[0].Unit, r.Units[n-1].Unit)
+		return fmt.Sprintf("%s to %s", r.Units[0].ID, r.Units[n-1].ID)
 	}
 	return ""
 }
@@ -129,20 +133,17 @@ func (v *view) charts(r, before *Release) {
 
 // units lists the files.
 func (v *view) units(r *Release) {
-	for i, m := range r.Units {
+	for i := range r.Units {
 		if i == maxUnits {
 			v.More = plural(int64(len(r.Units)-maxUnits), "more file")
 			break
 		}
-		v.Units = append(v.Units, unitOf(m))
+		v.Units = append(v.Units, unitOf(&r.Units[i]))
 	}
 }
 
-func unitOf(m *ledger.Manifest) unitView {
-	return unitView{
-		Name: m.Unit, Rows: count(m.Tally.Rows), Rejects: count(m.Tally.Rejects),
-		Flagged: share(m.Tally.Flagged, m.Tally.Rows), Digest: m.Output.SHA256.String(),
-	}
+func unitOf(u *Unit) unitView {
+	return unitView{Name: u.ID, Rows: count(u.Rows), Rejects: count(u.Rejects), Flagged: share(u.Marked, u.Rows), Digest: u.SHA256.String()}
 }
 
 // compare lists what changed since the previous release.

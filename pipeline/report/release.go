@@ -1,8 +1,8 @@
 // Package report makes one HTML page of the manifests of a release: may it be
 // handed over, and if not, why; then what is in it.
 //
-// [Load] reads the manifests below a directory, [New] takes those at hand;
-// both give a [Release]. [Write] makes the page, against an earlier release if
+// [Load] reads the manifests below a directory, a [Builder] takes those at
+// hand; both give a [Release]. [Write] makes the page, against an earlier release if
 // there is one. What is judged, and by which thresholds, is in verdict.go and
 // compare.go; chart.go draws; page.html and page.css are the page.
 //
@@ -26,38 +26,87 @@ import (
 
 // A Release is the outputs of one job, added up.
 type Release struct {
-	Units      []*ledger.Manifest // in order of their ids
-	Missing    []Missing          // what should be there and is not, or cannot be used
+	Units      []Unit    // in order of their ids
+	Missing    []Missing // what should be there and is not, or cannot be used
 	ConfigHash publish.Digest
 	Settings   job.Settings
 	Tally      ledger.Tally // of all units
 	Input      int64        // rows that went in
 
-	models []*cosmo.Model // one for each cosmology of the settings
+	canonical []byte         // the settings as the manifests have them
+	models    []*cosmo.Model // one for each cosmology of the settings
+}
+
+// A Unit is what the page says of one output.
+type Unit struct {
+	ID                           string
+	Input, Rows, Rejects, Marked int64
+	SHA256                       publish.Digest
 }
 
 // Missing is a unit that has no place in the sums, and why.
 type Missing struct{ Unit, Why string }
 
-// New adds up the manifests of a release. Those of another job than most are
-// listed as missing, since their columns cannot be added to the others.
-// Without a usable manifest the release is empty, and unfit.
-func New(units []*ledger.Manifest, missing []Missing) (*Release, error) {
-	r := &Release{Missing: append([]Missing(nil), missing...)}
-	r.ConfigHash = commonHash(units)
-	for _, m := range units {
-		if m.ConfigHash != r.ConfigHash {
-			r.Missing = append(r.Missing, Missing{m.Unit, fmt.Sprintf("was made by another job, of config hash %.12s…", m.ConfigHash)})
-			continue
+// A Builder adds up manifests one by one; it keeps only their sums, so that a
+// release may have any number of files. Its zero value is empty.
+type Builder struct {
+	groups  map[publish.Digest]*Release // by config hash
+	missing []Missing
+}
+
+// maxGroups bounds how many jobs' sums are held at once.
+const maxGroups = 8
+
+// Add adds a manifest.
+func (b *Builder) Add(m *ledger.Manifest) error {
+	r := b.groups[m.ConfigHash]
+	switch {
+	case r == nil && len(b.groups) == maxGroups:
+		b.Miss(m.Unit, otherJob(m.ConfigHash))
+		return nil
+	case r == nil:
+		r = &Release{ConfigHash: m.ConfigHash, canonical: m.Settings}
+		if b.groups == nil {
+			b.groups = make(map[publish.Digest]*Release)
 		}
-		r.Units = append(r.Units, m)
+		b.groups[m.ConfigHash] = r
 	}
-	sort.SliceStable(r.Units, func(i, j int) bool {
-		a, b := r.Units[i], r.Units[j]
-		if a.Unit != b.Unit {
-			return a.Unit < b.Unit
+	if err := r.Tally.Merge(&m.Tally); err != nil {
+		return fault.Data.Wrap(fmt.Errorf("adding up %s: %w", m.Unit, err))
+	}
+	r.Input += m.Input.Rows
+	r.Units = append(r.Units, Unit{m.Unit, m.Input.Rows, m.Tally.Rows, m.Tally.Rejects, m.Tally.Flagged, m.Output.SHA256})
+	return nil
+}
+
+// Miss notes a unit that should have a manifest and has no usable one.
+func (b *Builder) Miss(unit, why string) { b.missing = append(b.missing, Missing{unit, why}) }
+
+func otherJob(hash publish.Digest) string {
+	return fmt.Sprintf("was made by another job, of config hash %.12s…", hash.String())
+}
+
+// Release is the sum. Units of another job than most are listed as missing,
+// since their columns cannot be added to the others. Without a usable manifest
+// the release is empty, and unfit.
+func (b *Builder) Release() (*Release, error) {
+	r := &Release{}
+	for _, g := range b.groups {
+		if len(g.Units) > len(r.Units) || len(g.Units) == len(r.Units) && bytes.Compare(g.ConfigHash[:], r.ConfigHash[:]) < 0 {
+			r = g
 		}
-		return bytes.Compare(a.Output.SHA256[:], b.Output.SHA256[:]) < 0
+	}
+	r.Missing = append([]Missing(nil), b.missing...)
+	for _, g := range b.groups {
+		for i := range g.Units {
+			if g != r {
+				r.Missing = append(r.Missing, Missing{g.Units[i].ID, otherJob(g.ConfigHash)})
+			}
+		}
+	}
+	sort.Slice(r.Units, func(i, j int) bool {
+		a, b := &r.Units[i], &r.Units[j]
+		return a.ID < b.ID || a.ID == b.ID && bytes.Compare(a.SHA256[:], b.SHA256[:]) < 0
 	})
 	sort.Slice(r.Missing, func(i, j int) bool {
 		a, b := r.Missing[i], r.Missing[j]
@@ -66,47 +115,25 @@ func New(units []*ledger.Manifest, missing []Missing) (*Release, error) {
 	if len(r.Units) == 0 {
 		return r, nil
 	}
-	for _, m := range r.Units {
-		if err := r.Tally.Merge(&m.Tally); err != nil {
-			return nil, fault.Data.Wrap(fmt.Errorf("adding up %s: %w", m.Unit, err))
-		}
-		r.Input += m.Input.Rows
-	}
 	return r, r.settle()
-}
-
-// commonHash is the config hash of most manifests; the first in order of
-// several.
-func commonHash(units []*ledger.Manifest) (common publish.Digest) {
-	counts := make(map[publish.Digest]int)
-	for _, m := range units {
-		counts[m.ConfigHash]++
-	}
-	for hash, n := range counts {
-		best := counts[common]
-		if n > best || n == best && bytes.Compare(hash[:], common[:]) < 0 {
-			common = hash
-		}
-	}
-	return common
 }
 
 // settle reads the settings and builds the models.
 func (r *Release) settle() error {
-	if err := json.Unmarshal(r.Units[0].Settings, &r.Settings); err != nil {
-		return fault.Data.Wrap(fmt.Errorf("the settings in the manifest of %s: %w", r.Units[0].Unit, err))
+	if err := json.Unmarshal(r.canonical, &r.Settings); err != nil {
+		return fault.Data.Wrap(fmt.Errorf("the settings in the manifest of %s: %w", r.Units[0].ID, err))
 	}
 	for i := range r.Settings.Cosmologies {
 		m, err := cosmo.New(r.Settings.Cosmologies[i].Params())
 		if err != nil {
-			return fault.Data.Wrap(fmt.Errorf("cosmology %d in the manifest of %s: %w", i+1, r.Units[0].Unit, err))
+			return fault.Data.Wrap(fmt.Errorf("cosmology %d in the manifest of %s: %w", i+1, r.Units[0].ID, err))
 		}
 		r.models = append(r.models, m)
 	}
 	for i := range r.Settings.Selections {
 		s := &r.Settings.Selections[i]
 		if len(s.Limits) == 0 || len(s.Redshift) != 2 {
-			return fault.Data.Errorf("the selection %q in the manifest of %s has no limits", s.Name, r.Units[0].Unit)
+			return fault.Data.Errorf("the selection %q in the manifest of %s has no limits", s.Name, r.Units[0].ID)
 		}
 	}
 	return nil

@@ -10,7 +10,7 @@ import (
 // changed names the parts of the settings in which two releases differ.
 func changed(r, before *Release) string {
 	var now, then map[string]json.RawMessage
-	if json.Unmarshal(r.Units[0].Settings, &now) != nil || json.Unmarshal(before.Units[0].Settings, &then) != nil {
+	if json.Unmarshal(r.canonical, &now) != nil || json.Unmarshal(before.canonical, &then) != nil {
 		return "not known"
 	}
 	var names []string

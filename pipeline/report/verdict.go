@@ -5,7 +5,6 @@ import (
 	"math"
 
 	"catenrich/internal/status"
-	"catenrich/pipeline/ledger"
 )
 
 // A level is how grave a finding is.
@@ -119,7 +118,7 @@ func rows(r *Release) check {
 	case r.Input != t.Rows+t.Rejects:
 		c.Finding = fmt.Sprintf("%s in, but %s out and %s", plural(r.Input, "row"), count(t.Rows), plural(t.Rejects, "reject"))
 	case t.Rejects > 0:
-		c.Finding += ": records that cannot be split into fields; they are in *.rejects.csv"
+		c.Finding = fmt.Sprintf("%s cannot be split into fields and have no row (see *.rejects.csv); %s", plural(t.Rejects, "record"), c.Finding)
 	}
 	return c
 }
@@ -226,18 +225,18 @@ func sameFiles(r, before *Release) check {
 	c := check{Name: "No file is gone since last time", Rule: "stop if the previous release had a file that this one lacks"}
 	have := make(map[string]bool)
 	for _, m := range r.Units {
-		have[m.Unit] = true
+		have[m.ID] = true
 	}
-	var gone []*ledger.Manifest
+	var gone []Unit
 	for _, m := range before.Units {
-		if !have[m.Unit] {
+		if !have[m.ID] {
 			gone = append(gone, m)
 		}
 	}
 	c.Finding = plural(int64(len(r.Units)), "file") + " now, " + count(int64(len(before.Units))) + " then"
 	if len(gone) > 0 {
 		c.Level = stop
-		c.Finding += fmt.Sprintf("; %s not there any more, the first: %s", plural(int64(len(gone)), "file"), gone[0].Unit)
+		c.Finding += fmt.Sprintf("; %s not there any more, the first: %s", plural(int64(len(gone)), "file"), gone[0].ID)
 	}
 	return c
 }
