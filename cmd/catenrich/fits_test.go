@@ -168,6 +168,7 @@ func TestHDU(t *testing.T) {
 		if got := status(c.unit); got != 0 {
 			t.Errorf("%v: status %d", c.args, got)
 		}
+		mustRun(t, "verify", "out.fits", "--input", ".")
 		hashes[configHash.FindString(r.stderr)] = true
 	}
 	if len(hashes) != 4 {
