@@ -46,6 +46,9 @@ func TestFlatMemory(t *testing.T) {
 	if runtime.GOOS != "linux" {
 		t.Skip("peak memory is read from /proc")
 	}
+	if raceDetector {
+		t.Skip("the race detector's own memory would be measured")
+	}
 	scale := 20
 	if os.Getenv("GRAFT_BIG") != "" {
 		scale = 1

@@ -1,0 +1,5 @@
+//go:build !race
+
+package writers
+
+const raceDetector = false
