@@ -101,7 +101,8 @@ func (s *Scratch) size(o output, m *model, b *table.Batch, lo, hi int) {
 	}
 	for i, v := range values {
 		sizes[i] = math.Abs(sizes[i])
-		if v = math.Abs(v); o.form != ValueForm && e.Unit != Magnitude && !(sizes[i] >= v) {
+		relative := o.form == ErrorForm || o.form != ValueForm && e.Unit != Magnitude
+		if v = math.Abs(v); relative && !(sizes[i] >= v) {
 			sizes[i] = v
 		}
 	}

@@ -68,6 +68,8 @@ func (p *Prover) checkOutput(ctx context.Context, r *Report, m *ledger.Manifest)
 	switch {
 	case m.Verbatim.Size != m.Input.Size || m.Verbatim.SHA256 != m.Input.SHA256:
 		r.note("verbatim input", Failed, "the manifest gives the input another size or digest than the part that copies it")
+	case head == (publish.Digest{}):
+		r.note("verbatim input", Skipped, "the output has another size")
 	case head != m.Verbatim.SHA256:
 		r.note("verbatim input", Failed, "the first %d bytes have the digest %v, not %v as the input had", prefix, head, m.Verbatim.SHA256)
 	default:

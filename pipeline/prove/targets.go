@@ -13,7 +13,7 @@ import (
 )
 
 // Targets lists the outputs that paths mean, each once: a file stands for
-// itself, a manifest for its output, a directory for every output with a
+// itself, a manifest or a sidecar for its output, a directory for every output with a
 // manifest in or below it, the missing ones too. A directory without any is a
 // fault.NoInput.
 func Targets(paths []string) ([]string, error) {
@@ -41,10 +41,17 @@ func Targets(paths []string) ([]string, error) {
 	}), nil
 }
 
-// outputOf takes the ending of a manifest off a path.
+// outputOf takes the ending of a manifest off a path, or that of a sidecar
+// whose output has a manifest.
 func outputOf(path string) string {
 	for _, ending := range []string{publish.ManifestPath(""), publish.PendingPath("")} {
 		if output, ok := strings.CutSuffix(path, ending); ok && output != "" {
+			return output
+		}
+	}
+	for _, ending := range publish.Suffixes {
+		output, ok := strings.CutSuffix(path, ending)
+		if _, err := os.Stat(publish.ManifestPath(output)); ok && err == nil {
 			return output
 		}
 	}
@@ -64,7 +71,7 @@ func outputsIn(dir string) ([]string, error) {
 		if d.IsDir() && d.Name() == publish.LockDir {
 			return filepath.SkipDir
 		}
-		if output := outputOf(path); output != path {
+		if output := outputOf(path); output != path && !d.IsDir() {
 			found = append(found, output)
 		}
 		return nil

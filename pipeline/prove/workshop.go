@@ -16,6 +16,7 @@ import (
 // A workshop is a job made again from recorded settings, and its kernel on the
 // direct path.
 type workshop struct {
+	hash   publish.Digest
 	job    *job.Job
 	kernel *columns.Kernel
 	lost   []job.LostFile
@@ -26,7 +27,7 @@ func (p *Prover) workshop(output string, m *ledger.Manifest) (*workshop, error) 
 	if w := p.shops[m.ConfigHash]; w != nil && len(w.lost) == 0 {
 		return w, nil
 	}
-	w := new(workshop)
+	w := &workshop{hash: m.ConfigHash}
 	err := guard(func() (err error) {
 		find := func(sum string) []byte { return p.files.find(filepath.Dir(output), sum) }
 		if w.job, w.lost, err = job.FromSettings(m.Settings, find, columns.Catalog{}); err == nil {
