@@ -168,7 +168,7 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 // sidecar reports whether a path names a file that only catenrich writes, so
 // that "*.csv" does not take the rejects of an earlier run for a catalogue.
 func (p *Plan) sidecar(path string) bool {
-	return strings.HasSuffix(path, rejectsSuffix) || isReport(path) || strings.Contains(filepath.ToSlash(path), ".catenrich/")
+	return strings.HasSuffix(path, rejectsSuffix) || strings.HasSuffix(path, publish.ManifestPath("")) || isReport(path) || strings.Contains(filepath.ToSlash(path), ".catenrich/")
 }
 
 // bare strips the operation and path that fs adds to errors, since the message

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 
 	"catenrich/internal/exact"
 	"catenrich/pipeline/columns"
@@ -41,19 +42,21 @@ func planeChart(r *Release, a *zAxis, h *ledger.Histogram, b *job.BandSettings, 
 	brightest, faintest := magnitudeRange(byMagnitude, total)
 	c.y.low, c.y.high = mag.Edge(faintest+1), mag.Edge(brightest) // bright is up
 	c.axes("cosmological redshift z", fmt.Sprintf("absolute magnitude in %s, mag", b.Name), c.x.ticks(5), flipped(&c.y))
+	var shades [6]strings.Builder // from the fullest cells to the emptiest, each a third of the last
 	for cell := range h.Cells {
 		x1, x2 := z.Edge(cell.Keys[0]), z.Edge(cell.Keys[0]+1)
 		if x1 < a.low*(1-1e-12) || x2 > a.high*(1+1e-12) || cell.Keys[1] < brightest || cell.Keys[1] > faintest {
 			outside += cell.Count
 			continue
 		}
-		shade := 1
-		for limit := top; limit > cell.Count*2 && shade < 6; limit /= 3 {
+		shade := 0
+		for limit := top; limit > cell.Count*2 && shade < len(shades)-1; limit /= 3 {
 			shade++
 		}
-		left, right := c.x.at(x1), c.x.at(x2)
-		up, down := c.y.at(mag.Edge(cell.Keys[1])), c.y.at(mag.Edge(cell.Keys[1]+1))
-		c.add(`<rect class="shade s%d" x="%s" y="%s" width="%s" height="%s"/>`, 7-shade, spot(left), spot(up), spot(right-left), spot(down-up))
+		fmt.Fprintf(&shades[shade], "M%s %sH%sV%sH%sZ", spot(c.x.at(x1)), spot(c.y.at(mag.Edge(cell.Keys[1]))), spot(c.x.at(x2)), spot(c.y.at(mag.Edge(cell.Keys[1]+1))), spot(c.x.at(x1)))
+	}
+	for i := range shades {
+		c.add(`<path class="shade s%d" d="%s"/>`, len(shades)-i, shades[i].String())
 	}
 	note := fmt.Sprintf("%s; darker is more. Bright is up.", plural(total, "row"))
 	for i := range r.Settings.Selections {

@@ -97,7 +97,7 @@ func redshiftChart(r, before *Release, a *zAxis) *chart {
 		plural(n, "row"), number(a.median, 2), number(edges[mode], 2), number(edges[mode+1], 2), number(a.low, 2), number(a.high, 2))
 	note := fmt.Sprintf("Half of the rows are below z ≈ %s. Lookback times are of %s.", number(a.median, 2), r.modelName(0))
 	if a.outside > 0 {
-		note += fmt.Sprintf(" %s with a redshift outside the axis, as zero or negative ones.", plural(a.outside, "row"))
+		note += fmt.Sprintf(" %s outside the axis: zero, negative, or far from the others.", plural(a.outside, "row"))
 	}
 	if then != nil {
 		note += " Dashed: the previous release."

@@ -159,6 +159,7 @@ func compare(r, before *Release) []comparison {
 		line("rejects", r.Tally.Rejects, before.Tally.Rejects),
 		line("rows with a redshift", have, had),
 	}
+	list = append(list, compareSpreads(r, before)...)
 	s, ok := shiftOf(before, r)
 	if !ok {
 		return list
@@ -171,5 +172,19 @@ func compare(r, before *Release) []comparison {
 		comparison{"chance of such a D if rows were only added or removed at random", "", probability(s.Nested), ""},
 		comparison{"chance of such a D between independent samples", "", probability(s.Independent), ""},
 		comparison{"rows that must have changed their bin of redshift", "", "≥ " + count(s.Moved), ""})
+	return list
+}
+
+// compareSpreads compares <V/Vmax> of the selections that both have.
+func compareSpreads(r, before *Release) (list []comparison) {
+	then := make(map[string]spread)
+	for _, s := range spreads(before) {
+		then[s.Name] = s
+	}
+	for _, s := range spreads(r) {
+		if old, ok := then[s.Name]; ok {
+			list = append(list, comparison{"⟨V/Vmax⟩, " + s.Name, fixed(old.Mean, 4), fixed(s.Mean, 4), signed(s.Mean-old.Mean, 4)})
+		}
+	}
 	return list
 }

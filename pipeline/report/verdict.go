@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"math"
+	"strings"
 
 	"catenrich/internal/status"
 )
@@ -34,10 +35,12 @@ const (
 	stopWithout     = 0.50  //
 	lookMoreWithout = 0.01  // its growth since the previous release
 	stopMoreWithout = 0.05  //
+	lookMoreMarked  = 0.01  // growth of the share of rows with a status bit
+	stopMoreMarked  = 0.10  //
 	stopFewerRows   = 0.01  // share of rows lost since the previous release
 	lookSigmas      = 3     // of <V/Vmax> from 0.5
 	unlikely        = 1e-3  // probability below which a shift of n(z) is no chance
-	lookMoved       = 1e-3  // share of rows that must have changed their redshift
+	lookMoved       = 2e-3  // share of rows that must have changed their redshift
 	stopDistance    = 0.02  // of the cumulative distributions, where chance is ruled out
 	lookMean        = 0.002 // relative change of the mean redshift among as many rows
 )
@@ -56,7 +59,7 @@ func judge(r, before *Release) verdict {
 		v.add(reasons(r), without(r))
 		v.add(volumes(r)...)
 		if before != nil && len(before.Units) > 0 {
-			v.add(sameJob(r, before), sameFiles(r, before), fewer(r, before), moreWithout(r, before), shifted(r, before))
+			v.add(sameJob(r, before), sameFiles(r, before), fewer(r, before), moreWithout(r, before), moreMarked(r, before), shifted(r, before))
 		}
 	}
 	return v
@@ -102,7 +105,7 @@ func finished(r *Release) check {
 	c := check{Name: "Every file is finished", Rule: "stop if a file is missing, damaged or of another job", Level: grade(false, len(r.Missing) > 0 || len(r.Units) == 0)}
 	c.Finding = plural(int64(len(r.Units)), "file") + " of one job"
 	if n := len(r.Missing); n > 0 {
-		c.Finding = fmt.Sprintf("%s of %s cannot be used; the first: %s, %s", plural(int64(n), "file"), count(int64(n+len(r.Units))), r.Missing[0].Unit, r.Missing[0].Why)
+		c.Finding = fmt.Sprintf("%s of %s cannot be used; the first is %s: %s", count(int64(n)), plural(int64(n+len(r.Units)), "file"), r.Missing[0].Unit, r.Missing[0].Why)
 	} else if len(r.Units) == 0 {
 		c.Finding = "no file at all"
 	}
@@ -149,7 +152,7 @@ func without(r *Release) check {
 	part := float64(none) / float64(max(total, 1))
 	c := check{
 		Name: "Rows have a usable redshift", Level: grade(part > lookWithout, part > stopWithout),
-		Finding: fmt.Sprintf("%s of %s have none (%s)", count(none), plural(total, "row"), share(none, total)),
+		Finding: fmt.Sprintf("%s of %s have no redshift (%s)", count(none), plural(total, "row"), share(none, total)),
 		Rule:    fmt.Sprintf("look above %.0f %%, stop above %.0f %%", 100*lookWithout, 100*stopWithout),
 	}
 	if marked := r.Tally.Status[bit(status.Quality)]; marked > 0 {
@@ -244,11 +247,15 @@ func sameFiles(r, before *Release) check {
 func fewer(r, before *Release) check {
 	now, then := r.Tally.Rows, before.Tally.Rows
 	lost := float64(then-now) / float64(max(then, 1))
-	return check{
+	c := check{
 		Name: "No rows were lost since last time", Level: grade(now < then, lost > stopFewerRows),
-		Finding: fmt.Sprintf("%s now, %s then (%s)", plural(now, "row"), count(then), change(now-then)),
+		Finding: fmt.Sprintf("%s, %s last time (%s)", plural(now, "row"), count(then), change(now-then)),
 		Rule:    fmt.Sprintf("look if there are fewer, stop if %.0f %% fewer", 100*stopFewerRows),
 	}
+	if now < then {
+		c.Finding = fmt.Sprintf("%s fewer than last time (%s of them): %s", plural(then-now, "row"), share(then-now, then), c.Finding)
+	}
+	return c
 }
 
 func moreWithout(r, before *Release) check {
@@ -258,40 +265,65 @@ func moreWithout(r, before *Release) check {
 	more := float64(now)/float64(max(r.Tally.Rows, 1)) - float64(then)/float64(max(before.Tally.Rows, 1))
 	return check{
 		Name: "As many rows have a redshift as last time", Level: grade(more > lookMoreWithout, more > stopMoreWithout),
-		Finding: fmt.Sprintf("%s have none, %s then: %s percentage points", share(now, r.Tally.Rows), share(then, before.Tally.Rows), signed(100*more, 2)),
+		Finding: fmt.Sprintf("%s of the rows have no redshift, %s last time (%s percentage points): %s with one, were %s", share(now, r.Tally.Rows), share(then, before.Tally.Rows), signed(100*more, 2), plural(haveNow, "row"), count(haveThen)),
 		Rule:    fmt.Sprintf("look above +%.0f points, stop above +%.0f", 100*lookMoreWithout, 100*stopMoreWithout),
 	}
+}
+
+// noRedshift are the bits of rows that have no redshift; without and
+// moreWithout judge these.
+const noRedshift = status.Missing | status.NotNumber | status.Redshift | status.Quality
+
+// moreMarked judges the status bit whose share of rows grew most.
+func moreMarked(r, before *Release) check {
+	c := check{
+		Name: "Status bits are as rare as last time", Finding: "no bit became more frequent",
+		Rule: fmt.Sprintf("look if the share of a bit grew by %.0f percentage point, stop if by %.0f", 100*lookMoreMarked, 100*stopMoreMarked),
+	}
+	most := 0.0
+	for i := range status.Count {
+		now, then := r.Tally.Status[i], before.Tally.Status[i]
+		grown := float64(now)/float64(max(r.Tally.Rows, 1)) - float64(then)/float64(max(before.Tally.Rows, 1))
+		if int32(1)<<i&noRedshift != 0 || grown <= most {
+			continue
+		}
+		most = grown
+		c.Finding = fmt.Sprintf("bit %d, %s: %s (%s), %s last time (%s)", 1<<i, status.Describe(i), plural(now, "row"), share(now, r.Tally.Rows), count(then), share(then, before.Tally.Rows))
+	}
+	c.Level = grade(most > lookMoreMarked, most > stopMoreMarked)
+	return c
 }
 
 // shifted judges whether n(z) moved.
 func shifted(r, before *Release) check {
 	c := check{
 		Name: "n(z) is that of last time",
-		Rule: fmt.Sprintf("look if rows added or removed by chance explain it with less than %g, or if %g %% of rows must have moved; stop if independent samples could not differ so (same limit) and D is above %g", unlikely, 100*lookMoved, stopDistance),
+		Rule: fmt.Sprintf("look if %g %% of the rows must have changed redshift, if chance explains the difference with less than %g, or if the mean of as many rows moved by %g %%; stop if even independent samples would not differ so (same limit) and D is above %g",
+			100*lookMoved, unlikely, 100*lookMean, stopDistance),
 	}
 	s, ok := shiftOf(before, r)
 	if !ok {
 		c.Level, c.Finding = look, "one of the two has no histogram of redshifts to compare"
 		return c
 	}
-	moved := float64(s.Moved) / float64(s.Now)
-	drift := s.New/s.Old - 1
-	isLook := s.Nested < unlikely && (s.Before != s.Now || moved > lookMoved || math.Abs(drift) > lookMean)
-	c.Level = grade(isLook, s.Independent < unlikely && s.D > stopDistance)
+	moved, drift := float64(s.Moved)/float64(s.Now), s.New/s.Old-1
+	same := s.Before == s.Now
+	c.Level = grade(moved > lookMoved || !same && s.Nested < unlikely || same && math.Abs(drift) > lookMean, s.Independent < unlikely && s.D > stopDistance)
 	if s.D == 0 && drift == 0 {
 		c.Finding = "the same, bin for bin"
 		return c
 	}
-	c.Finding = fmt.Sprintf("largest distance of the cumulative distributions D = %s", number(s.D, 2))
-	if drift == drift {
-		c.Finding += fmt.Sprintf("; mean redshift %s, was %s (%s %%)", fixed(s.New, 5), fixed(s.Old, 5), signed(100*drift, 2))
-	}
+	var parts []string
 	if s.Moved > 0 {
-		c.Finding += fmt.Sprintf("; at least %s must have changed redshift, unless rows were both added and removed", plural(s.Moved, "row"))
+		parts = append(parts, fmt.Sprintf("at least %s (%s) changed redshift, or as many came as went", plural(s.Moved, "row"), share(s.Moved, s.Now)))
 	}
-	if s.Before != s.Now {
-		c.Finding += fmt.Sprintf("; chance that rows only %s at random do this: %s", map[bool]string{true: "added", false: "removed"}[s.Now > s.Before], probability(s.Nested))
+	if drift == drift {
+		parts = append(parts, fmt.Sprintf("the mean redshift is %s, was %s (%s %%)", fixed(s.New, 4), fixed(s.Old, 4), signed(100*drift, 2)))
 	}
+	if !same {
+		parts = append(parts, fmt.Sprintf("chance of such a difference if rows were only %s, at random: %s", map[bool]string{true: "added", false: "removed"}[s.Now > s.Before], probability(s.Nested)))
+	}
+	c.Finding = "n(z): " + strings.Join(parts, "; ")
 	return c
 }
 
