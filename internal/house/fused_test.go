@@ -20,7 +20,7 @@ func TestNothingFuses(t *testing.T) {
 	judge := regexp.MustCompile(`^direct(_model)?\.go:`) // judge outputs, and make none
 	for _, pkg := range []string{
 		"internal/exact", "internal/number", "internal/delim", "cosmo", "cosmo/frame", "cosmo/photo", "cosmo/selection", "cosmo/spread",
-		"pipeline/columns", "pipeline/ledger", "pipeline/demo",
+		"pipeline/columns", "pipeline/ledger", "pipeline/demo", "pipeline/report",
 	} {
 		build := exec.Command("go", "build", "-gcflags=catenrich/"+pkg+"=-S", "catenrich/"+pkg)
 		build.Env = append(os.Environ(), "GOOS=linux", "GOARCH=arm64", "CGO_ENABLED=0")

@@ -46,6 +46,9 @@ type tick struct {
 
 // ticks chooses about n round values.
 func (s *scale) ticks(n int) []tick {
+	if span := s.high - s.low; !(span > 0 && span <= math.MaxFloat64) || s.log && !(s.low > 0) {
+		return nil
+	}
 	if s.log {
 		return s.logTicks(n)
 	}
@@ -80,7 +83,7 @@ func (s *scale) logTicks(n int) []tick {
 		factors = []float64{1, 3}
 	}
 	first, last := int(math.Floor(exact.Log10(s.low))), int(math.Floor(exact.Log10(s.high)))
-	every := max(1, (last-first)/max(n, 1))
+	every := (last - first + n) / n
 	var list []tick
 	for k := first; k <= last; k++ {
 		for _, f := range factors {

@@ -33,9 +33,10 @@ func errorStrips(r *Release) (groups []stripGroup) {
 		if !ok {
 			continue
 		}
-		if h := r.Tally.Histograms[columns.PairName(c.Name, value)]; h != nil {
+		both := columns.PairName(c.Name, value)
+		if h := r.histogram(both, ledger.ErrorAxis(both)); h != nil {
 			relative.take(value, h)
-		} else if h := r.Tally.Histograms[c.Name]; h != nil && h.Axes()[0].Scale == "binary" {
+		} else if h := r.histogram(c.Name, ledger.ErrorAxis(c.Name)); h != nil {
 			absolute.take(value, h)
 		}
 	}
@@ -62,9 +63,6 @@ func errorOf(name string, r *Release) (value string, ok bool) {
 
 // take adds a column's errors, if there are any.
 func (g *stripGroup) take(name string, h *ledger.Histogram) {
-	if len(h.Axes()) != 1 {
-		return
-	}
 	s := strip{Name: name, histogram: h}
 	axis := h.Axes()[0]
 	for c := range h.Cells {

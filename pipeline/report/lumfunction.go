@@ -18,8 +18,9 @@ func luminosityCharts(r *Release) (list []*chart) {
 		for i := range r.Settings.Selections {
 			s := &r.Settings.Selections[i]
 			band := s.Limits[0].Band
-			d := r.Tally.Densities[columns.PairName(r.name("vmax_weight_"+s.Name, m), r.name("absolute_magnitude_"+band, m))]
-			if d == nil {
+			mag := r.name("absolute_magnitude_"+band, m)
+			d := r.Tally.Densities[columns.PairName(r.name("vmax_weight_"+s.Name, m), mag)]
+			if d == nil || d.Axis() != ledger.DensityMagnitudeAxis(mag) {
 				continue
 			}
 			if c := luminosityChart(r, d, s.Name, band, m, fmt.Sprintf("lf%d", len(list))); c != nil {
@@ -40,7 +41,7 @@ func points(d *ledger.Density) (list []point, width float64) {
 	axis := d.Axis()
 	width = axis.Edge(axis.First+1) - axis.Edge(axis.First)
 	for c := range d.Cells {
-		if c.Key >= axis.First && c.Key < axis.End && c.Weights > 0 {
+		if c.Key >= axis.First && c.Key < axis.End && c.Weights > 0 && c.Weights < huge && c.Squares < huge {
 			list = append(list, point{middle(&axis, c.Key), c.Weights / width, math.Sqrt(c.Squares) / width, c.Count})
 		}
 	}
@@ -90,6 +91,9 @@ func luminosityChart(r *Release, d *ledger.Density, selection, band string, mode
 	c.Desc = note + " Magnitude: density ± error (rows):" + strings.TrimSuffix(values.String(), ";") + "."
 	return c
 }
+
+// huge is beyond any density: a sum that overflowed.
+const huge = 1e300
 
 // few is how many rows make a bin worth a full dot.
 const few = 10

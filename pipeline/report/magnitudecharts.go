@@ -18,7 +18,8 @@ func planeCharts(r *Release, a *zAxis) (list []*chart) {
 	for i := range r.Settings.Bands {
 		b := &r.Settings.Bands[i]
 		name := r.name("absolute_magnitude_"+b.Name, 0)
-		if h := r.Tally.Histograms[columns.PairName(name, columns.RedshiftStatistic)]; h != nil && len(h.Axes()) == 2 {
+		both := columns.PairName(name, columns.RedshiftStatistic)
+		if h := r.histogram(both, ledger.PlaneRedshiftAxis(), ledger.PlaneMagnitudeAxis(name)); h != nil {
 			list = append(list, planeChart(r, a, h, b, fmt.Sprintf("plane%d", i)))
 		}
 	}
@@ -58,7 +59,7 @@ func planeChart(r *Release, a *zAxis, h *ledger.Histogram, b *job.BandSettings, 
 	for i := range shades {
 		c.add(`<path class="shade s%d" d="%s"/>`, len(shades)-i, shades[i].String())
 	}
-	note := fmt.Sprintf("%s; darker is more. Bright is up.", plural(total, "row"))
+	note := fmt.Sprintf("%s; a stronger colour is more. Bright is up.", plural(total, "row"))
 	for i := range r.Settings.Selections {
 		note += drawLimits(c, r, a, b, &r.Settings.Selections[i])
 	}
@@ -135,12 +136,12 @@ func drawLimits(c *chart, r *Release, a *zAxis, b *job.BandSettings, s *job.Sele
 			if drawn != "" {
 				drawn += ", "
 			}
-			drawn += fmt.Sprintf("%s limit %s mag", limit.name, number(*limit.at, 4))
+			drawn += fmt.Sprintf("%s limit %s mag", limit.name, plain(*limit.at))
 		}
 		if drawn == "" {
 			return fmt.Sprintf(" The limits of %s are a column of the catalogue, and not drawn.", s.Name)
 		}
-		note = fmt.Sprintf(" Line: selection %s, %s, z %s to %s", s.Name, drawn, number(s.Redshift[0], 3), number(s.Redshift[1], 3))
+		note = fmt.Sprintf(" Line: selection %s, %s, z %s to %s", s.Name, drawn, plain(s.Redshift[0]), plain(s.Redshift[1]))
 		if k.Kind == "table" || k.Kind == "sed" || k.Kind == "column" {
 			note += " (drawn without its K-correction, which the manifest does not hold)"
 		}
@@ -160,8 +161,8 @@ func kOf(k *job.KSettings, z float64) float64 {
 // volumeCharts are V/Vmax, one a selection and model.
 func volumeCharts(r *Release) (list []*chart) {
 	for _, s := range spreads(r) {
-		h := r.Tally.Histograms[s.Name]
-		if h == nil || len(h.Axes()) != 1 {
+		h := r.histogram(s.Name, ledger.FractionAxis(s.Name))
+		if h == nil {
 			continue
 		}
 		list = append(list, volumeChart(h, s, fmt.Sprintf("volume%d", len(list))))

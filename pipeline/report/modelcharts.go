@@ -21,7 +21,7 @@ func (r *Release) modelName(i int) string {
 	name := r.presetName(i)
 	if name == "" {
 		p := r.models[i].Params()
-		name = fmt.Sprintf("H₀ %s, Ωm %s", number(p.H0, 4), number(p.OmegaM, 4))
+		name = fmt.Sprintf("H₀ %s, Ωm %s", plain(p.H0), plain(p.OmegaM))
 	}
 	if suffix := r.Settings.Cosmologies[i].Suffix; suffix != "" {
 		name += " (" + suffix + ")"

@@ -20,13 +20,13 @@ func modelViews(r *Release) (list []modelView) {
 		p := m.Params()
 		v := modelView{Name: r.modelName(i), Age: gyr(m.Age())}
 		v.Parameters = []fact{
-			{"H₀", number(p.H0, 5) + space + "km/s/Mpc"}, {"Ωm", number(m.OmegaM(), 5)}, {"Ωde", number(m.OmegaDE(), 5)},
+			{"H₀", plain(p.H0) + space + "km/s/Mpc"}, {"Ωm", number(m.OmegaM(), 5)}, {"Ωde", number(m.OmegaDE(), 5)},
 		}
 		if !p.Flat {
 			v.Parameters = append(v.Parameters, fact{"Ωk", number(m.OmegaK(), 4)})
 		}
 		if p.W0 != -1 || p.Wa != 0 {
-			v.Parameters = append(v.Parameters, fact{"w₀", number(p.W0, 4)}, fact{"wₐ", number(p.Wa, 4)})
+			v.Parameters = append(v.Parameters, fact{"w₀", plain(p.W0)}, fact{"wₐ", plain(p.Wa)})
 		}
 		v.Parameters = append(v.Parameters, fact{"age", v.Age}, fact{"Hubble time", gyr(m.HubbleTime())})
 		v.Surfaces = surfaces(r, i, m)

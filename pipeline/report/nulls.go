@@ -2,6 +2,7 @@ package report
 
 import (
 	"math"
+	"sort"
 
 	"catenrich/internal/status"
 	"catenrich/pipeline/ledger"
@@ -44,8 +45,9 @@ type nullGroup struct {
 	Columns []string
 	Empty   string
 	Share   string
-	Width   float64 // per cent of the rows
-	Reasons []reason
+	Width   float64  // per cent of the rows
+	Reasons []reason // the commonest
+	Rarer   int      // how many more there are
 	nulls   int64
 	bits    ledger.Bits
 }
@@ -62,12 +64,25 @@ next:
 		}
 		g := nullGroup{Columns: []string{c.Name}, Empty: count(c.Nulls), Share: share(c.Nulls, r.Tally.Rows), nulls: c.Nulls, bits: c.Reasons}
 		g.Width = float64(math.Round(1000*float64(c.Nulls)/float64(max(r.Tally.Rows, 1)))) / 10
-		for i := range status.Count {
-			if n := c.Reasons[i]; n > 0 {
-				g.Reasons = append(g.Reasons, reason{Bit: 1 << i, Meaning: status.Describe(i), Rows: count(n)})
-			}
-		}
+		g.Reasons, g.Rarer = commonest(&c.Reasons)
 		groups = append(groups, g)
 	}
 	return groups
+}
+
+// commonest lists the most frequent bits, the first of equals first, and how
+// many others there are.
+func commonest(bits *ledger.Bits) (list []reason, rarer int) {
+	const listed = 5
+	var order []int
+	for i := range status.Count {
+		if bits[i] > 0 {
+			order = append(order, i)
+		}
+	}
+	sort.SliceStable(order, func(a, b int) bool { return bits[order[a]] > bits[order[b]] })
+	for _, i := range order[:min(len(order), listed)] {
+		list = append(list, reason{Bit: 1 << i, Meaning: status.Describe(i), Rows: count(bits[i])})
+	}
+	return list, max(len(order)-listed, 0)
 }

@@ -87,6 +87,11 @@ func number(v float64, digits int) string {
 	return fixed(v, max(digits-whole, 0))
 }
 
+// plain is a number of the settings, as short as it can be written.
+func plain(v float64) string {
+	return strings.Replace(strconv.FormatFloat(v, 'g', -1, 64), "-", "−", 1)
+}
+
 // fixed is v to so many decimal places, with grouped digits and a real minus.
 func fixed(v float64, places int) string {
 	text := strconv.FormatFloat(math.Abs(v), 'f', places, 64)

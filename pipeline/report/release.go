@@ -14,6 +14,7 @@ import (
 	"bytes"
 	"encoding/json"
 	"fmt"
+	"slices"
 	"sort"
 
 	"catenrich/cosmo"
@@ -130,6 +131,9 @@ func (r *Release) settle() error {
 		}
 		r.models = append(r.models, m)
 	}
+	if len(r.models) == 0 {
+		return fault.Data.Errorf("the manifest of %s has no cosmology", r.Units[0].ID)
+	}
 	for i := range r.Settings.Selections {
 		s := &r.Settings.Selections[i]
 		if len(s.Limits) == 0 || len(s.Redshift) != 2 {
@@ -168,4 +172,16 @@ func (r *Release) redshifts() (count int64, sum float64) {
 }
 
 // octaves is n(z) over octaves of z; nil where no manifest has it.
-func (r *Release) octaves() *ledger.Histogram { return r.Tally.Histograms[columns.RedshiftOctaves] }
+func (r *Release) octaves() *ledger.Histogram {
+	return r.histogram(columns.RedshiftOctaves, ledger.RedshiftOctaveAxis())
+}
+
+// histogram is a statistic over exactly these axes, or nil: what is drawn
+// relies on them, and a manifest may hold anything.
+func (r *Release) histogram(name string, axes ...ledger.Axis) *ledger.Histogram {
+	h := r.Tally.Histograms[name]
+	if h == nil || !slices.Equal(h.Axes(), axes) {
+		return nil
+	}
+	return h
+}

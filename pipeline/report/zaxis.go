@@ -48,7 +48,7 @@ func newZAxis(h *ledger.Histogram) (a zAxis) {
 	last = -floorTo(-last, a.bars)
 	first, last = max(first, axis.First), min(last, axis.End)
 	a.low, a.high, a.ok = axis.Edge(first), axis.Edge(last), true
-	a.median = middle(&axis, quantileKey(h, positive, 0.5))
+	a.median = min(middle(&axis, quantileKey(h, positive, 0.5)), cosmo.MaxRedshift)
 	a.outside = total
 	for c := range h.Cells {
 		if c.Keys[0] >= first && c.Keys[0] < last {
@@ -95,7 +95,7 @@ func (a *zAxis) samples() []float64 {
 	const n = 96
 	zs := make([]float64, n+1)
 	for i := range zs {
-		zs[i] = min(a.low*exact.Pow(a.high/a.low, float64(i)/n), a.high)
+		zs[i] = min(a.low*exact.Pow(a.high/a.low, float64(i)/n), a.high, cosmo.MaxRedshift)
 	}
 	return zs
 }
@@ -148,7 +148,7 @@ func redshiftAt(m *cosmo.Model, gyr float64) (z float64, ok bool) {
 // a bin that z divides is divided in proportion, and the count is then not
 // exact.
 func (r *Release) beyond(z float64) (n int64, exactly bool) {
-	h := r.Tally.Histograms[columns.RedshiftStatistic]
+	h := r.histogram(columns.RedshiftStatistic, ledger.RedshiftAxis())
 	if h == nil || z != z {
 		return 0, z != z
 	}
