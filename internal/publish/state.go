@@ -13,7 +13,8 @@ import (
 
 // Suffixes are the sidecars that an output can have, by what is added to its
 // name: the records that have no row, and the description of the columns.
-// Nothing else beside an output is ever replaced or removed.
+// Nothing else beside an output is ever replaced or removed, but a report that
+// [Put] made.
 var Suffixes = []string{".columns.csv", ".rejects.csv"}
 
 // ManifestPath and PendingPath name an output's manifest, and the manifest of
