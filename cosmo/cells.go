@@ -189,16 +189,6 @@ func (f *fit) whole(width float64) float64 {
 	return float64(sum * width)
 }
 
-// at evaluates the fit, last term and all, at fraction s of the width.
-func (f *fit) at(s float64) float64 {
-	x := float64(2*s) - 1
-	var b1, b2 float64 // Clenshaw 1955
-	for k := order - 1; k > 0; k-- {
-		b1, b2 = float64(2*x*b1)-b2+f[k], b1
-	}
-	return float64(x*b1) - b2 + f[0]
-}
-
 // A total is a sum that carries its rounding error (Neumaier 1974).
 type total struct{ sum, rest float64 }
 

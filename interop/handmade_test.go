@@ -69,7 +69,10 @@ func plainFile() ([]byte, error) {
 	}
 	var buf bytes.Buffer
 	w := file.NewParquetWriter(&buf, root)
-	g := w.AppendRowGroup()
+	g, err := w.AppendRowGroupChecked()
+	if err != nil {
+		return nil, err
+	}
 	var z []float64
 	var half []parquet.FixedLenByteArray
 	var shape []parquet.ByteArray

@@ -37,7 +37,10 @@ func writeParquet(t testing.TB, dir string, fields schema.FieldList, groups ...f
 	}
 	w := file.NewParquetWriter(f, root)
 	for _, write := range groups {
-		g := w.AppendRowGroup()
+		g, err := w.AppendRowGroupChecked()
+		if err != nil {
+			t.Fatal(err)
+		}
 		write(g)
 		if err := g.Close(); err != nil {
 			t.Fatal(err)
@@ -335,7 +338,10 @@ func TestParquetLongPages(t *testing.T) {
 			}
 			w := file.NewParquetWriter(f, root, file.WithWriterProps(parquet.NewWriterProperties(parquet.WithCompression(codec), parquet.WithDictionaryDefault(false),
 				parquet.WithDataPageSize(64<<20), parquet.WithDataPageVersion(version), parquet.WithCompressionLevel(1))))
-			g := w.AppendRowGroup()
+			g, err := w.AppendRowGroupChecked()
+			if err != nil {
+				t.Fatal(err)
+			}
 			for range fields {
 				c, err := g.NextColumn()
 				if err != nil {

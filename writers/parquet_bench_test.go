@@ -71,7 +71,10 @@ func makeBenchFile(t testing.TB, rows, columns, group int) string {
 	}
 	for from := 0; from < rows; from += group {
 		n := min(group, rows-from)
-		g := w.AppendRowGroup()
+		g, err := w.AppendRowGroupChecked()
+		if err != nil {
+			t.Fatal(err)
+		}
 		for c := range columns {
 			for i := range n {
 				values[i] = (noise(int64(from+i)*64+int64(c)) - 1) * 3

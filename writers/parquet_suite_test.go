@@ -47,7 +47,10 @@ func writeWide(t testing.TB, dir string, tb readertest.Table) string {
 	w := file.NewParquetWriter(f, schema.MustGroup(schema.NewGroupNode("schema", parquet.Repetitions.Required, fields, -1)))
 	const size = 1800
 	for from := 0; from < tb.Rows(); from += size {
-		g := w.AppendRowGroup()
+		g, err := w.AppendRowGroupChecked()
+		if err != nil {
+			t.Fatal(err)
+		}
 		for i := range tb.Columns {
 			cells := tb.Columns[i][from:min(from+size, tb.Rows())]
 			values, defs := []float64{}, make([]int16, len(cells))

@@ -46,7 +46,10 @@ func (s *shape) make(t testing.TB) string {
 	w := file.NewParquetWriter(f, root, file.WithWriterProps(parquet.NewWriterProperties(props...)), file.WithWriteMetadata(s.keys))
 	row := int64(0)
 	for _, rows := range s.groups {
-		g := w.AppendRowGroup()
+		g, err := w.AppendRowGroupChecked()
+		if err != nil {
+			t.Fatal(err)
+		}
 		z, defs, ids := make([]float64, 0, rows), make([]int16, rows), make([]int64, rows)
 		for i := range rows {
 			ids[i] = row + int64(i)
@@ -292,7 +295,10 @@ func arrowColumns(t *testing.T, rows int) *file.Reader {
 	var buf bytes.Buffer
 	w := file.NewParquetWriter(&buf, root, file.WithWriterProps(parquet.NewWriterProperties(
 		parquet.WithCompression(compress.Codecs.Zstd), parquet.WithDictionaryDefault(false), parquet.WithPageIndexEnabled(true))))
-	g := w.AppendRowGroup()
+	g, err := w.AppendRowGroupChecked()
+	if err != nil {
+		t.Fatal(err)
+	}
 	for i := range added {
 		c, err := g.NextColumn()
 		if err != nil {

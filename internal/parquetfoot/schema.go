@@ -82,7 +82,7 @@ type element struct {
 	name                      string
 	physical, length, repeat  int64
 	children, scale, convert  int64
-	hasType, hasScale, hasLog bool
+	hasType, hasLog bool
 	logical                   Logical
 }
 

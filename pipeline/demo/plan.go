@@ -1,7 +1,5 @@
 package demo
 
-import "slices"
-
 // What an object is.
 const (
 	galaxy = iota
@@ -90,9 +88,4 @@ func count(slots []slot) census {
 		}
 	}
 	return c
-}
-
-// countOf returns how many rows have the defect of that name.
-func (c *census) countOf(name string) int {
-	return c.defects[slices.IndexFunc(defects, func(d defect) bool { return d.name == name })]
 }

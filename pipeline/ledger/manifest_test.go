@@ -26,7 +26,8 @@ func batch(r *rand.Rand, rows int) (status []int32, distance, faster *table.Colu
 	for i := range rows {
 		distance.Float[i], faster.Flag[i] = r.Float64()*5000, uint8(r.IntN(2))
 		if r.IntN(10) == 0 {
-			status[i] = 1<<r.IntN(15) | 1<<r.IntN(15)
+			first, second := r.IntN(15), r.IntN(15)
+			status[i] = 1<<first | 1<<second
 			distance.Float[i] = math.NaN()
 			faster.Flag[i] = table.Null
 		}
