@@ -144,6 +144,9 @@ func (d direct) between(z float64, f func(x float64) float64) float64 {
 	if d.m.turns && z < 0 {
 		return d.towardTurn(z, f)
 	}
+	if math.Abs(z) < 1e-20 {
+		return z * f(1) // and panels of a denormal would be empty
+	}
 	u := math.Log1p(z)
 	integrand := func(below float64) float64 { // below = 1 - s
 		s := 1 - below
@@ -310,18 +313,38 @@ func (d direct) contactLost(z, dc float64) float64 {
 	if !(u < 0) {
 		return d.age(math.Expm1(u))
 	}
-	// the time from today until then, over u because s would be large
-	later := converge(int(-u/0.5)+1, func(n int) (sum float64) {
-		for k := range n {
-			sum += legendre(func(v float64) float64 { return 1 / d.rate(math.Exp(v)) }, u*float64(k+1)/float64(n), u*float64(k)/float64(n))
+	later := d.until(max(u, alone))
+	if u < alone { // where E = sqrt(O_de) x^p
+		p := 1.5 * (1 + d.m.params.W0)
+		rise := alone - u
+		if p != 0 {
+			rise = (math.Exp(-p*u) - math.Exp(-p*alone)) / p
 		}
-		return sum
-	})
+		later += rise / math.Sqrt(d.m.e.dark)
+	}
+	if later > math.MaxFloat64 {
+		return math.NaN()
+	}
 	if d.ahead != nil {
 		return d.ahead().now + later
 	}
 	return d.age(0) + later
 }
+
+// until returns the time from today until ln(1+z) = u < 0, integrated over u
+// because s would be large.
+func (d direct) until(u float64) float64 {
+	return converge(int(-u/0.5)+1, func(n int) (sum float64) {
+		for k := range n {
+			sum += legendre(func(v float64) float64 { return 1 / d.rate(math.Exp(v)) }, u*float64(k+1)/float64(n), u*float64(k)/float64(n))
+		}
+		return sum
+	})
+}
+
+// alone is ln(1+z) where constant dark energy is all that is left, unless it is
+// so soft that others keep up with it; direct.exit has made sure of that.
+const alone = -120.0
 
 // exit finds ln(1+z_x) where the event horizon has shrunk to dc, by bisection
 // that changes to Newton's method once close; NaN where there is no such place.
@@ -338,6 +361,15 @@ func (d direct) exit(z, dc float64) float64 {
 	j := 0
 	for j+1 < len(x) && radius[j+1] > dc {
 		j++
+	}
+	if last := math.Exp(alone); d.m.params.Wa == 0 && (j+1 == len(x) || x[j+1] < last) {
+		p := 1.5 * (1 + d.m.params.W0)
+		root := math.Sqrt(d.m.e.dark)
+		if math.Abs(d.rate(last)/(root*math.Pow(last, p))-1) < 1e-13 {
+			// dc = x^(1-p)/[(1-p) sqrt(O_de)], brought away from the denormals, of
+			// which math.Log is wrong on amd64
+			return (math.Log(dc*0x1p100*(1-p)*root) - 100*math.Ln2) / (1 - p)
+		}
 	}
 	if j+1 == len(x) || x[j+1] < tiniest {
 		return math.NaN() // dark energy so soft that the age is astronomical
