@@ -137,7 +137,7 @@ func (p *Prover) checkInput(r *Report, m *ledger.Manifest) error {
 	info, err := os.Stat(path)
 	if err == nil && info.IsDir() {
 		path = filepath.Join(path, filepath.FromSlash(m.Unit))
-		info, err = os.Stat(path)
+		_, err = os.Stat(path)
 	}
 	if err != nil {
 		return fault.NoInput.Errorf("--input: %w", err)
