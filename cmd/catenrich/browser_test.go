@@ -23,6 +23,9 @@ import (
 // skipped where no browser is installed; in continuous integration that is a
 // failure. Screenshots stay in $REPORT_SHOTS, if that is set.
 func TestReportInBrowser(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes a browser and most of a minute")
+	}
 	browser, err := exec.LookPath("chromium")
 	if err != nil {
 		if os.Getenv("CI") == "true" {
