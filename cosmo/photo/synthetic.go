@@ -289,12 +289,18 @@ func (k *Synthetic) Value(z float64) float64 {
 
 // Slope is dK/dz of the table.
 func (k *Synthetic) Slope(z float64) float64 {
+	_, slope := k.At(z)
+	return slope
+}
+
+// At is both Value and Slope, for the price of one.
+func (k *Synthetic) At(z float64) (value, slope float64) {
 	c, u, scale := k.piece(z)
 	if c == nil {
-		return math.NaN()
+		return math.NaN(), math.NaN()
 	}
 	v := float64(3*c[3]*u) + float64(2*c[2])
-	return float64((float64(v*u) + c[1]) * scale)
+	return cubic(c, u), float64((float64(v*u) + c[1]) * scale)
 }
 
 // Range is where the SED covers the band and has flux in it.

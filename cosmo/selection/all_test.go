@@ -31,6 +31,7 @@ type survey struct {
 	st                         []int32
 	partial                    spread.Partial
 	turns                      spread.Turns
+	work                       Work
 	bands                      [2]band
 }
 
@@ -189,7 +190,7 @@ func (s *survey) selections() {
 		for i := range d.corrected {
 			d.corrected[i] = d.m[i] - d.ext[i]
 		}
-		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, Shift: s.shift}, s.st)
+		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, Shift: s.shift, Work: &s.work}, s.st)
 	}
 	a, b := &s.bands[0], &s.bands[1]
 	Intersect(a.zlo, a.zhi, b.zlo, b.zhi)
