@@ -199,9 +199,10 @@ type Scratch struct {
 	rows  Rows
 	base  Base
 
-	low, high *rim         // of intervals; nil where the job has none
-	ends      [5][]float64 // of the interval at hand
-	sizes     [][]float64  // of each column, as Judge returns them; nil while running
+	low, high  *rim         // of intervals; nil where the job has none
+	ends       [5][]float64 // of the interval at hand
+	intervalOf place        // whose that is
+	sizes      [][]float64  // of each column, as Judge returns them; nil while running
 }
 
 // Run computes every added column of a decoded batch, and counts it.
@@ -296,6 +297,7 @@ func (k *Kernel) compute(b *table.Batch, s *Scratch, lo, hi int) {
 		m.Fill(&s.base.Base, m.uses, s.rows.ZModel)
 		s.base.begin(m)
 		if s.low != nil {
+			s.intervalOf = place{}
 			for _, r := range []*rim{s.low, s.high} {
 				m.Fill(&r.base.Base, m.rimUses, r.rows.ZModel)
 				r.base.begin(m)

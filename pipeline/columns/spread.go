@@ -111,23 +111,29 @@ func modulusDisplaced(b *Base, _, shift []float64) {
 func contactLostError(b *Base, out []float64) {
 	p := b.partials(len(out))
 	b.model.ContactLostSlope(p.Cos, &b.Base)
-	for i := range p.Cos {
-		p.Cos[i] *= b.Scales.Time
-		p.Rest[i] = 0
-	}
+	p.Alone = true
+	scale(p.Cos, p.Cos, b.Scales.Time)
 	b.Rows.sigmas.Fill(out, p)
 }
 
 // absoluteError is the error of an absolute magnitude: mu, K and e share one
 // redshift, so their derivatives are added with signs before squaring.
-func absoluteError(b *Base, out []float64) {
+func absoluteError(b *Base, out []float64) { copy(out, b.sigmaAbsolute()) }
+
+// sigmaAbsolute returns these errors for the band at hand, which those of
+// luminosities come from too.
+func (b *Base) sigmaAbsolute() []float64 {
 	band := b.band()
-	b.inputs.AbsoluteMagnitude(b.partials(len(out)), band.slopes(), b.Rows.ZObs, band.plan.Evolution)
-	b.Rows.sigmas.FillWith(out, &b.partial, band.variance)
+	v, filled := b.sigmaMemo[b.item].ask(len(b.Rows.ZModel))
+	if !filled {
+		b.inputs.AbsoluteMagnitude(b.partials(len(v)), band.slopes(), b.Rows.ZObs, band.plan.Evolution)
+		b.Rows.sigmas.FillWith(v, &b.partial, band.variance)
+	}
+	return v
 }
 
 func luminosityError(b *Base, out []float64) {
-	absoluteError(b, out)
+	copy(out, b.sigmaAbsolute())
 	values := b.spare[:len(out)]
 	photo.Luminosity(values, b.absolute(), b.band().sun)
 	spread.Luminosities(out, values, out)
@@ -149,8 +155,9 @@ func kError(b *Base, out []float64) {
 
 func evolutionError(b *Base, out []float64) {
 	p := b.partials(len(out))
+	p.Alone = true
 	for i := range p.Cos {
-		p.Cos[i], p.Rest[i] = -b.band().plan.Q*(1+b.Rows.ZCos[i]), 0
+		p.Cos[i] = -b.band().plan.Q * (1 + b.Rows.ZCos[i])
 	}
 	b.Rows.sigmas.Fill(out, p)
 }
@@ -218,7 +225,13 @@ func newErrorInput(where func(job.Role) int) errorInput {
 // fillSigmas takes the errors of the redshifts of rows lo to hi.
 func (r *Rows) fillSigmas(z *redshifter, batch *table.Batch, lo, hi int) {
 	s := r.buffers.sigma[:hi-lo]
-	r.sigmas.Z, r.sigmas.In, r.sigmas.Floor = s, r.ZIn, z.floor
+	z.sigmas(s, batch, r, lo, hi)
+	r.sigmas.Set(s, r.ZIn, z.floor, nil)
+}
+
+// sigmas fills s with the errors of the redshifts as given, 0 where the
+// catalogue has no column of them.
+func (z *redshifter) sigmas(s []float64, batch *table.Batch, r *Rows, lo, hi int) {
 	if z.errors.sigma < 0 {
 		clear(s)
 		return
@@ -293,10 +306,33 @@ func (r *Rows) moveTo(o *Rows, z []float64) {
 	}
 }
 
-// interval fills one end of a column's interval.
+// interval fills one end of a column's interval. The other end comes next, if
+// it is asked for, and is computed with it.
 func (s *Scratch) interval(o output, m *model, out []float64) {
 	n := len(out)
-	v := spread.Interval{Zlo: s.low.rows.ZModel, Zhi: s.high.rows.ZModel, Xlo: s.ends[0][:n], Xhi: s.ends[1][:n], X: s.ends[2][:n]}
+	low, high := s.ends[0][:n], s.ends[1][:n]
+	if at := (place{m, o.entry, o.item}); s.intervalOf != at {
+		s.intervalOf = at
+		s.fillInterval(o, m, low, high)
+	}
+	if o.form == LowForm {
+		copy(out, low)
+	} else {
+		copy(out, high)
+	}
+}
+
+// place names a column of a model.
+type place struct {
+	model *model
+	entry *Entry
+	item  int
+}
+
+// fillInterval fills both ends of a column's interval.
+func (s *Scratch) fillInterval(o output, m *model, low, high []float64) {
+	n := len(low)
+	v := spread.Interval{Zlo: s.low.rows.ZModel, Zhi: s.high.rows.ZModel, Xlo: low, Xhi: high, X: s.ends[2][:n]}
 	for i, base := range []*Base{&s.low.base, &s.high.base, &s.base} {
 		base.item = o.item
 		o.entry.Eval(base, s.ends[i][:n])
@@ -308,13 +344,7 @@ func (s *Scratch) interval(o output, m *model, out []float64) {
 		}
 		o.entry.Spread.Displace(&s.base, v.Scale, v.Shift)
 	}
-	low, high := s.ends[0][:n], s.ends[1][:n]
 	v.Fill(low, high, m.turns[o.at])
-	if o.form == LowForm {
-		copy(out, low)
-	} else {
-		copy(out, high)
-	}
 }
 
 // findTurns finds where a column of a model turns, at rest.
