@@ -6,6 +6,7 @@ import (
 	"catenrich/cosmo"
 	"catenrich/internal/exact"
 	"catenrich/internal/fault"
+	"catenrich/internal/status"
 )
 
 // A Synthesis says which synthetic K-correction a band needs. SED and Band are
@@ -301,6 +302,20 @@ func (k *Synthetic) At(z float64) (value, slope float64) {
 	}
 	v := float64(3*c[3]*u) + float64(2*c[2])
 	return cubic(c, u), float64((float64(v*u) + c[1]) * scale)
+}
+
+// fill is [Set.Fill] for a band without templates.
+func (k *Synthetic) fill(value, slope, z []float64, st []int32) {
+	for i, v := range z {
+		kv, ks := k.At(v)
+		value[i] = kv
+		if slope != nil {
+			slope[i] = ks
+		}
+		if kv != kv && v == v {
+			st[i] |= status.Coverage
+		}
+	}
 }
 
 // Range is where the SED covers the band and has flux in it.

@@ -69,13 +69,6 @@ func NewInputs(m *cosmo.Model, b *cosmo.Base) *Inputs {
 	return &Inputs{HubbleDistance: m.HubbleDistance(), HubbleTime: m.HubbleTime(), H0: m.Params().H0, Antipode: m.Antipode(), Base: b}
 }
 
-func at(r []float64, i int) float64 {
-	if r == nil {
-		return 1
-	}
-	return r[i]
-}
-
 // slope returns dD_M/dD_C of row i with the sign that |D_M| has past the
 // antipode of a closed model. It needs DC and Slope.
 func (n *Inputs) slope(i int) float64 {

@@ -86,6 +86,26 @@ func Cos(x float64) float64 {
 	}
 }
 
+// SinCos returns both [Sin] and [Cos] of x, to the same bits, and reduces the
+// angle once.
+func SinCos(x float64) (sin, cos float64) {
+	switch a := math.Abs(x); {
+	case !(a <= maxAngle):
+		return math.NaN(), math.NaN()
+	case a < 0x1p-27:
+		return x, 1
+	}
+	n, r, rl := quarterTurns(x)
+	sin, cos = sinPart(r, rl), cosPart(r, rl)
+	if n&1 != 0 {
+		sin, cos = cos, -sin
+	}
+	if n&2 != 0 {
+		sin, cos = -sin, -cos
+	}
+	return sin, cos
+}
+
 // atanRatio returns atan(a/b) for 0 <= a <= b, 0 < b, in two parts, expanded
 // near the closest c = i/32: atan(a/b) = atan(c) + atan((a - c b)/(b + c a)).
 func atanRatio(a, b float64) (hi, lo float64) {
