@@ -304,16 +304,30 @@ func (k *Synthetic) At(z float64) (value, slope float64) {
 	return cubic(c, u), float64((float64(v*u) + c[1]) * scale)
 }
 
-// fill is [Set.Fill] for a band without templates.
+// fill is [Set.Fill] for a band without templates: At, written out because the
+// compiler does not inline it.
 func (k *Synthetic) fill(value, slope, z []float64, st []int32) {
+	last := uint64(len(k.cells) - 1)
 	for i, v := range z {
-		kv, ks := k.At(v)
-		value[i] = kv
-		if slope != nil {
-			slope[i] = ks
+		x := 1 + v
+		if !(x >= k.lo && x <= k.hi) {
+			if v == v {
+				st[i] |= status.Coverage
+			}
+			value[i] = math.NaN()
+			if slope != nil {
+				slope[i] = math.NaN()
+			}
+			continue
 		}
-		if kv != kv && v == v {
-			st[i] |= status.Coverage
+		cell := &k.cells[min(cellOf(x)-k.first, last)]
+		t := float64((x - cell.start) * cell.scale)
+		j := min(int32(t), cell.n-1)
+		c, u := &k.coef[cell.off+j], t-float64(j)
+		value[i] = cubic(c, u)
+		if slope != nil {
+			s := float64(3*c[3]*u) + float64(2*c[2])
+			slope[i] = float64((float64(s*u) + c[1]) * cell.scale)
 		}
 	}
 }

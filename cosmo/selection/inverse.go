@@ -138,10 +138,10 @@ func (v *inverse) guess(limit, e float64) float64 {
 	if c == nil {
 		return math.NaN()
 	}
-	near, far := c.hints[0].shift(e), c.hints[1].shift(e)
-	slope := far - near
+	near := c.hints[0].shift(e)
+	slope := c.hints[1].shift(e) - near
 	d := float64((near + float64(slope*u)) * (1 - float64(slope*v.scale))) // where it has moved to
-	z, _ := v.at(limit - d)
+	z, _ := c.at(u - float64(d*v.scale))
 	return z
 }
 

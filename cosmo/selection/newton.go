@@ -32,12 +32,14 @@ type task struct {
 func (w *Work) begin() { w.tasks, w.z = w.tasks[:0], w.z[:0] }
 
 // add notes a task of the row at hand, and where to start.
-func (w *Work) add(t task, guess float64) {
-	t.row = int32(w.row)
+func (w *Work) add(o *object, limit, from, end, guess float64, near bool) {
 	if guess != guess {
-		guess = t.from
+		guess = from
 	}
-	w.tasks, w.z = append(w.tasks, t), append(w.z, t.clamp(guess))
+	w.tasks = append(w.tasks, task{})
+	t := &w.tasks[len(w.tasks)-1]
+	t.c, t.limit, t.q, t.from, t.end, t.row, t.near = o.c, limit, o.q, from, end, int32(w.row), near
+	w.z = append(w.z, t.clamp(guess))
 }
 
 // finish solves the tasks, by a step of Newton's rule from each guess and more

@@ -232,6 +232,6 @@ func (o *object) root(work *Work, p *piece, limit, from, end float64, near bool)
 	} else {
 		z = p.inverse.guess(limit, o.q-1)
 	}
-	work.add(task{c: o.c, limit: limit, q: o.q, from: from, end: end, near: near}, z)
+	work.add(o, limit, from, end, z, near)
 	return o.z
 }

@@ -270,8 +270,10 @@ func (s *Scratch) fillRims(z *redshifter, batch *table.Batch, lo, hi int) {
 	low, high := s.low.rows.buffers.zIn[:n], s.high.rows.buffers.zIn[:n]
 	copy(low, batch.In[z.errors.low].Float[lo:hi])
 	copy(high, batch.In[z.errors.high].Float[lo:hi])
-	for i := range low {
-		if !z.models(r.cosAt(i, low[i])) || !z.models(r.cosAt(i, high[i])) {
+	r.findPaces()
+	for i, pace := range r.pace {
+		z0, in := r.ZCos[i], r.ZIn[i]
+		if !z.models(moved(z0, low[i]-in, pace)) || !z.models(moved(z0, high[i]-in, pace)) {
 			low[i] = math.NaN()
 		}
 	}
@@ -280,11 +282,18 @@ func (s *Scratch) fillRims(z *redshifter, batch *table.Batch, lo, hi int) {
 	s.high.rows.moveTo(r, high)
 }
 
-// cosAt is the cosmological redshift of row i if its redshift as given were z:
+// findPaces computes how fast z_cos and z_obs move with the redshift as given:
 // at fixed position and peculiar velocity, all 1+z are proportional.
-func (r *Rows) cosAt(i int, z float64) float64 {
-	return r.ZCos[i] + float64((z-r.ZIn[i])*((1+r.ZCos[i])/(1+r.ZIn[i])))
+func (r *Rows) findPaces() {
+	n, b := len(r.ZIn), &r.buffers
+	r.pace, r.paceObs = b.pace[:n], b.paceObs[:n]
+	for i, z := range r.ZIn {
+		r.pace[i], r.paceObs[i] = (1+r.ZCos[i])/(1+z), (1+r.ZObs[i])/(1+z)
+	}
 }
+
+// moved is a redshift at pace when the redshift as given has moved by d.
+func moved(z, d, pace float64) float64 { return z + float64(d*pace) }
 
 // models reports whether the model's columns have values at a redshift.
 func (z *redshifter) models(v float64) bool {
@@ -298,8 +307,8 @@ func (r *Rows) moveTo(o *Rows, z []float64) {
 	r.ZCos, r.ZFrame = r.ZModel, r.ZModel
 	r.Status, r.Toward, r.ObsRatio, r.FrameRatio, r.Shift = o.Status, o.Toward, o.ObsRatio, o.FrameRatio, o.Shift
 	for i, v := range z {
-		r.ZModel[i] = o.cosAt(i, v)
-		r.ZObs[i] = o.ZObs[i] + float64((v-o.ZIn[i])*((1+o.ZObs[i])/(1+o.ZIn[i])))
+		d := v - o.ZIn[i]
+		r.ZModel[i], r.ZObs[i] = moved(o.ZCos[i], d, o.pace[i]), moved(o.ZObs[i], d, o.paceObs[i])
 	}
 	for i := range r.bands {
 		r.bands[i].moveTo(r, &o.bands[i])
