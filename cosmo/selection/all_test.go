@@ -89,7 +89,7 @@ func newSurvey(b testing.TB) *survey {
 	s.route, _ = frame.NewRoute(frame.Heliocentric, frame.CMB, true)
 	rng := rand.New(rand.NewPCG(9, 9))
 	for i := range batch {
-		s.ra[i], s.dec[i] = 360*rng.Float64(), 180*rng.Float64()-90
+		s.ra[i], s.dec[i] = 360*rng.Float64(), float64(180*rng.Float64())-90
 		s.zin[i] = float64(float32(math.Pow(10, -1.7+1.4*rng.Float64()))) // the same on every machine
 		s.sz[i], s.zlo[i], s.zhi[i] = 0.01, s.zin[i]-0.005, s.zin[i]+0.005
 	}
