@@ -345,6 +345,9 @@ func (s *Scratch) numbers(o output, m *model, out []float64) {
 	default:
 		s.interval(o, m, out)
 	}
+	if finite(out) {
+		return
+	}
 	for i, v := range out {
 		if math.Abs(v) <= math.MaxFloat64 {
 			continue
@@ -356,6 +359,23 @@ func (s *Scratch) numbers(o output, m *model, out []float64) {
 			rows.blameSpread(o, i)
 		}
 	}
+}
+
+// finite reports whether every number is. v - v is 0 or NaN, and four sums wait
+// for one another less than one does.
+func finite(v []float64) bool {
+	var a, b, c, d float64
+	for len(v) >= 4 {
+		a += v[0] - v[0]
+		b += v[1] - v[1]
+		c += v[2] - v[2]
+		d += v[3] - v[3]
+		v = v[4:]
+	}
+	for _, x := range v {
+		a += x - x
+	}
+	return a+b+c+d == 0
 }
 
 // blame gives the reason for a null cell. Mostly the row's bits explain it: it
