@@ -32,10 +32,11 @@ func Directions(u *Vectors, ra, dec []float64, st []int32) {
 			u.X[i], u.Y[i], u.Z[i] = math.NaN(), math.NaN(), math.NaN()
 			continue
 		}
-		cosD := cosDeg(d)
-		u.X[i] = cosD * cosDeg(a)
-		u.Y[i] = cosD * sinDeg(a)
-		u.Z[i] = sinDeg(d)
+		sinD, cosD := sinCosDeg(d)
+		sinA, cosA := sinCosDeg(a)
+		u.X[i] = cosD * cosA
+		u.Y[i] = cosD * sinA
+		u.Z[i] = sinD
 	}
 }
 
@@ -68,4 +69,16 @@ func cosDeg(d float64) float64 {
 		return 0
 	}
 	return exact.Cos(d * degree)
+}
+
+// sinCosDeg is both.
+func sinCosDeg(d float64) (sin, cos float64) {
+	sin, cos = exact.SinCos(d * degree)
+	switch d {
+	case 0, 180, 360, -180:
+		sin = 0
+	case 90, 270, -90, -270:
+		cos = 0
+	}
+	return sin, cos
 }

@@ -47,6 +47,10 @@ func LuminosityDistances(dl, dm, zcos, obs, frame []float64) {
 func ModulusShifts(shift, obs, frame []float64) {
 	obs, frame = obs[:len(shift)], frame[:len(shift)]
 	for i := range shift {
-		shift[i] = 5 * exact.Log10(obs[i]*frame[i])
+		shift[i] = obs[i] * frame[i]
+	}
+	exact.Log10Slice(shift, shift)
+	for i := range shift {
+		shift[i] *= 5
 	}
 }

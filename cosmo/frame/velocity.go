@@ -112,6 +112,9 @@ func (c Convention) slope(b float64) float64 {
 func Valid(z []float64, lo, hi float64, st []int32) {
 	st = st[:len(z)]
 	for i, v := range z {
+		if v > -1 && v >= lo && v <= hi && v <= math.MaxFloat64 {
+			continue
+		}
 		switch {
 		case v != v:
 			continue
@@ -119,10 +122,8 @@ func Valid(z []float64, lo, hi float64, st []int32) {
 			st[i] |= status.NotNumber
 		case v <= -1:
 			st[i] |= status.Redshift
-		case v < lo || v > hi:
-			st[i] |= status.Range
 		default:
-			continue
+			st[i] |= status.Range
 		}
 		z[i] = math.NaN()
 	}

@@ -138,6 +138,10 @@ func (s *Set) Templates(t []int32, names [][]byte, st []int32) {
 // range gives NaN and status.Coverage, a NaN stays NaN.
 func (s *Set) Fill(k, slope, z []float64, template []int32, st []int32) {
 	z, st = z[:len(k)], st[:len(k)]
+	if c, ok := s.Each[0].(*Synthetic); ok && template == nil {
+		c.fill(k, slope, z, st)
+		return
+	}
 	for i, v := range z {
 		c := s.of(template, i)
 		if c == nil || v != v {

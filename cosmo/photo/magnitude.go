@@ -82,34 +82,50 @@ func (p *Photometer) Validate(band string, has bool, s Spread) error {
 // NaN and status.Flux.
 func (p *Photometer) Magnitudes(m, values []float64, st []int32) {
 	values, st = values[:len(m)], st[:len(m)]
-	zero, lnB := p.ZeroPoint+p.Offset, p.logSoftening()
-	if p.Measure == Asinh {
-		zero = p.Offset // its flux is in maggies
+	if p.Measure == Flux {
+		p.fluxMagnitudes(m, values, st)
+		return
 	}
+	lnB := p.logSoftening()
 	for i, v := range values {
 		if v != v {
 			st[i] |= status.Magnitude
 			m[i] = v
 			continue
 		}
-		switch p.Measure {
-		case Magnitude:
-			m[i] = v + p.Offset
+		m[i] = v + p.Offset
+		if p.Measure == Magnitude {
 			continue
-		case Asinh:
-			y := -v/pogson - lnB
-			if y > farFromZero {
-				m[i] = v + p.Offset // both magnitudes agree to the last bit
-				continue
-			}
-			v = 2 * p.Softening * exact.Sinh(y)
 		}
-		if !(v > 0) {
+		y := -v/pogson - lnB
+		switch {
+		case y > farFromZero: // both magnitudes agree to the last bit
+		case y > 0:
+			m[i] = p.Offset - float64(2.5*exact.Log10(2*p.Softening*exact.Sinh(y)))
+		default:
 			st[i] |= status.Flux
 			m[i] = math.NaN()
-			continue
 		}
-		m[i] = zero - float64(2.5*exact.Log10(v))
+	}
+}
+
+// fluxMagnitudes is Magnitudes for fluxes.
+func (p *Photometer) fluxMagnitudes(m, values []float64, st []int32) {
+	for i, v := range values {
+		switch {
+		case v > 0:
+		case v != v:
+			st[i] |= status.Magnitude
+		default:
+			st[i] |= status.Flux
+			v = math.NaN()
+		}
+		m[i] = v
+	}
+	exact.Log10Slice(m, m)
+	zero := p.ZeroPoint + p.Offset
+	for i, l := range m {
+		m[i] = zero - float64(2.5*l)
 	}
 }
 

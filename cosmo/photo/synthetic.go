@@ -6,6 +6,7 @@ import (
 	"catenrich/cosmo"
 	"catenrich/internal/exact"
 	"catenrich/internal/fault"
+	"catenrich/internal/status"
 )
 
 // A Synthesis says which synthetic K-correction a band needs. SED and Band are
@@ -289,12 +290,46 @@ func (k *Synthetic) Value(z float64) float64 {
 
 // Slope is dK/dz of the table.
 func (k *Synthetic) Slope(z float64) float64 {
+	_, slope := k.At(z)
+	return slope
+}
+
+// At is both Value and Slope, for the price of one.
+func (k *Synthetic) At(z float64) (value, slope float64) {
 	c, u, scale := k.piece(z)
 	if c == nil {
-		return math.NaN()
+		return math.NaN(), math.NaN()
 	}
 	v := float64(3*c[3]*u) + float64(2*c[2])
-	return float64((float64(v*u) + c[1]) * scale)
+	return cubic(c, u), float64((float64(v*u) + c[1]) * scale)
+}
+
+// fill is [Set.Fill] for a band without templates: At, written out because the
+// compiler does not inline it.
+func (k *Synthetic) fill(value, slope, z []float64, st []int32) {
+	last := uint64(len(k.cells) - 1)
+	for i, v := range z {
+		x := 1 + v
+		if !(x >= k.lo && x <= k.hi) {
+			if v == v {
+				st[i] |= status.Coverage
+			}
+			value[i] = math.NaN()
+			if slope != nil {
+				slope[i] = math.NaN()
+			}
+			continue
+		}
+		cell := &k.cells[min(cellOf(x)-k.first, last)]
+		t := float64((x - cell.start) * cell.scale)
+		j := min(int32(t), cell.n-1)
+		c, u := &k.coef[cell.off+j], t-float64(j)
+		value[i] = cubic(c, u)
+		if slope != nil {
+			s := float64(3*c[3]*u) + float64(2*c[2])
+			slope[i] = float64((float64(s*u) + c[1]) * cell.scale)
+		}
+	}
 }
 
 // Range is where the SED covers the band and has flux in it.

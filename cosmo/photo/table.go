@@ -89,6 +89,19 @@ func (t *Table) Slope(z float64) float64 {
 	return t.slope[i]
 }
 
+// Line is Value and Slope, and how far z may move before it leaves the interval.
+func (t *Table) Line(z float64) (value, slope, room float64) {
+	i := t.interval(z)
+	if i < 0 {
+		return math.NaN(), math.NaN(), 0
+	}
+	value = t.k[i] + float64((z-t.z[i])*t.slope[i])
+	if z == t.z[i+1] {
+		value = t.k[i+1]
+	}
+	return value, t.slope[i], min(z-t.z[i], t.z[i+1]-z)
+}
+
 // Range is that of the table.
 func (t *Table) Range() (lo, hi float64) { return t.z[0], t.z[len(t.z)-1] }
 

@@ -30,7 +30,10 @@ type survey struct {
 	lo, hi, xlo, xhi           []float64
 	st                         []int32
 	partial                    spread.Partial
+	inputs                     *spread.Inputs
+	sigmas                     spread.Sigmas
 	turns                      spread.Turns
+	work                       Work
 	bands                      [2]band
 }
 
@@ -82,11 +85,11 @@ func newSurvey(b testing.TB) *survey {
 		&s.dl, &s.da, &s.mu, &s.shift, &s.lo, &s.hi, &s.xlo, &s.xhi} {
 		*p = f()
 	}
-	s.partial.Resize(batch)
+	s.inputs = spread.NewInputs(s.m, &s.base)
 	s.route, _ = frame.NewRoute(frame.Heliocentric, frame.CMB, true)
 	rng := rand.New(rand.NewPCG(9, 9))
 	for i := range batch {
-		s.ra[i], s.dec[i] = 360*rng.Float64(), 180*rng.Float64()-90
+		s.ra[i], s.dec[i] = 360*rng.Float64(), float64(180*rng.Float64())-90
 		s.zin[i] = float64(float32(math.Pow(10, -1.7+1.4*rng.Float64()))) // the same on every machine
 		s.sz[i], s.zlo[i], s.zhi[i] = 0.01, s.zin[i]-0.005, s.zin[i]+0.005
 	}
@@ -149,16 +152,19 @@ func (s *survey) photometry() {
 
 // errors: section 5, of distances and of both bands.
 func (s *survey) errors() {
-	n := spread.NewInputs(s.m, &s.base)
+	n, sig := s.inputs, &s.sigmas
+	n.Begin()
 	n.ObsRatio, n.FrameRatio = s.obs, s.fr
-	sig := spread.Sigmas{Z: s.sz, In: s.zin, Floor: 250}
+	sig.Set(s.sz, s.zin, 250, nil)
 	for _, fill := range []func(*spread.Partial){n.ComovingDistance, n.LuminosityDistance, n.AngularDiameterDistance, n.DistanceModulus, n.Age} {
+		s.partial.Resize(batch)
 		fill(&s.partial)
 		sig.Fill(s.scratch, &s.partial)
 	}
 	for j := range s.bands {
 		d := &s.bands[j]
 		d.p.Errors(d.sm, d.flux, d.ivar, photo.FluxIvar, s.st)
+		s.partial.Resize(batch)
 		n.AbsoluteMagnitude(&s.partial, d.slope, s.zo, d.evolution)
 		spread.MagnitudeVariance(d.v, d.sm, nil, 2.285, s.scratch)
 		sig.FillWith(d.sabs, &s.partial, d.v)
@@ -189,11 +195,12 @@ func (s *survey) selections() {
 		for i := range d.corrected {
 			d.corrected[i] = d.m[i] - d.ext[i]
 		}
-		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, Shift: s.shift}, s.st)
+		d.sel.Roots(d.zlo, d.zhi, &Rows{Z: s.zf, Apparent: d.corrected, Offset: d.offset, ObsRatio: s.obs, Shift: s.shift, Work: &s.work}, s.st)
 	}
 	a, b := &s.bands[0], &s.bands[1]
 	Intersect(a.zlo, a.zhi, b.zlo, b.zhi)
-	(&Survey{Area: 1200}).Fill(&a.vol, s.m, s.zf, a.zlo, a.zhi, s.st)
+	Shells(s.xlo, s.xhi, s.m, a.zlo, a.zhi, &s.work, s.st)
+	(&Survey{Area: 1200}).Fill(&a.vol, s.m.HubbleDistance(), s.base.Volume, s.xlo, s.xhi, s.st)
 }
 
 // M comes back from m(z) with A, K and e to 1e-9 mag, and no row of the survey
@@ -249,7 +256,7 @@ func TestSameBits(t *testing.T) {
 	for _, v := range [][]float64{v.Vmax, v.OverVmax, v.Weight} {
 		binary.Write(h, binary.LittleEndian, v)
 	}
-	const want = 0x3ebe0d78b171e832
+	const want = 0x120a4adfdc534d0f
 	if got := h.Sum64(); got != want {
 		t.Errorf("outputs sum to %#x, want %#x", got, uint64(want))
 	}

@@ -18,17 +18,21 @@ const least = 1e-8
 // A curve is w(z) for objects at rest, q = 1, cut into rising and falling
 // pieces.
 type curve struct {
-	m      Model
-	k      photo.Correction
-	e      photo.Evolution
-	zero   float64 // mag, 5 log10(D_H/10 pc)
-	klo    float64 // range of k
-	khi    float64
-	zlo    float64 // of the pieces: the selection's, within what k covers at q = 1
-	zhi    float64
-	steep  float64 // largest |dK/dln(1+z)|, mag
-	pieces []piece // in order of z, without gaps
+	m          Model
+	k          photo.Correction
+	e          photo.Evolution
+	zero       float64 // mag, 5 log10(D_H/10 pc)
+	klo        float64 // range of k
+	khi        float64
+	zlo        float64 // of the pieces: the selection's, within what k covers at q = 1
+	zhi        float64
+	steep      float64 // largest |dK/dln(1+z)|, mag
+	everywhere bool    // K is known at all redshifts of the selection for |q-1| up to near
+	pieces     []piece // in order of z, without gaps
 }
+
+// near is the q-1 of a frame and a peculiar velocity.
+const near = 0.01
 
 // A piece is a run of z over which w rises or falls throughout.
 type piece struct {
@@ -41,6 +45,7 @@ func newCurve(m Model, k photo.Correction, e photo.Evolution, zmin, zmax float64
 	c := &curve{m: m, k: k, e: e, zero: float64(5*exact.Log10(m.HubbleDistance())) + 25}
 	c.klo, c.khi = k.Range()
 	c.zlo, c.zhi = max(zmin, c.klo, least), min(zmax, c.khi)
+	c.everywhere = c.klo+float64(near*(1+c.zlo)) < c.zlo && c.zhi+float64(near*(1+c.zhi)) < c.khi
 	if !(c.zhi > c.zlo) {
 		return c // no piece: nothing can be found
 	}
@@ -76,6 +81,29 @@ func (c *curve) slope(z float64) float64 {
 		d = -d
 	}
 	return float64(fluxPerMag*(d+1/(1+z))) + c.k.Slope(z) - c.e.Q
+}
+
+// correction returns K and dK/dz at z_obs, and how far z_obs may move before a
+// kink of K, which only tables have.
+func (c *curve) correction(zobs float64) (k, slope, room float64) {
+	switch k := c.k.(type) {
+	case *photo.Synthetic:
+		value, slope := k.At(zobs)
+		return value, slope, math.Inf(1)
+	case *photo.Table:
+		return k.Line(zobs)
+	}
+	return c.k.Value(zobs), c.k.Slope(zobs), math.Inf(1)
+}
+
+// hintAt differences K at z over the step of hints.
+func (c *curve) hintAt(z float64) hint {
+	if _, same := c.k.Scale(1 + hintStep); same {
+		return hint{}
+	}
+	k := func(q float64) float64 { return c.k.Value(min(max(float64(q*(1+z))-1, c.klo), c.khi)) }
+	here, up, down := c.k.Value(z), k(1+hintStep), k(1-hintStep)
+	return hint{float32((up - down) / (2 * hintStep)), float32((up - here + (down - here)) / (2 * hintStep * hintStep))}
 }
 
 // findPieces walks over a fine grid, and cuts the range wherever w turns.

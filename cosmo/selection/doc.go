@@ -14,9 +14,11 @@
 //
 //	w(z) = mu(z) + K(z_obs) + e(z)
 //
-// and a limit on the magnitude is a limit on w (curve.go). Roots are read off
-// a table of the inverse of w, made from the model's own cells and proved against
-// them, cell by cell, when it is made (inverse.go).
+// and a limit on the magnitude is a limit on w (curve.go). Where w is smooth and
+// the two redshifts are one, roots are read off a table of the inverse of w, made
+// from the model's own cells and proved against them, cell by cell, when it is
+// made (inverse.go); elsewhere the table is where Newton's rule starts
+// (newton.go).
 package selection
 
 import (
@@ -30,6 +32,7 @@ type Model interface {
 	At(q cosmo.Quantity, z float64) float64
 	HubbleDistance() float64 // Mpc
 	Antipode() float64       // D_C/D_H, infinite unless the model is closed
+	Fill(b *cosmo.Base, q cosmo.Quantity, z []float64)
 }
 
 // Limits say which objects a survey holds. Missing limits are infinite.
@@ -66,6 +69,7 @@ func ValidateArea(name string, area float64) error {
 // A Selection is a set of limits in one band and model. It is immutable, so any
 // number of goroutines may share one.
 type Selection struct {
+	m      Model
 	limits Limits
 	curves []*curve // one for each template
 }
@@ -75,7 +79,7 @@ type Selection struct {
 // row by row, see [Rows]. A K-correction that is a catalogue column has no z
 // dependence and so no place here.
 func New(m Model, k *photo.Set, e photo.Evolution, l Limits) *Selection {
-	s := &Selection{limits: l}
+	s := &Selection{m: m, limits: l}
 	for _, c := range k.Each {
 		s.curves = append(s.curves, newCurve(m, c, e, l.Zmin, l.Zmax))
 	}

@@ -2,31 +2,37 @@ package selection
 
 import "math"
 
-// stepsPerMag cuts the inverse into steps of w. A cubic over 1/64 mag is good to
-// 1e-11 in z where w is smooth; elsewhere a step is halved up to maxHalved
-// times.
-const (
-	stepsPerMag = 64
-	maxHalved   = 6
-)
+// stepsPerMag cuts the inverse into cells of w. A cubic over 1/64 mag is good to
+// 1e-11 in z where w is smooth.
+const stepsPerMag = 64
 
-// sure is how well a cubic must return its w to be used.
+// sure is how well a cubic must return its w to be used as it is.
 const sure = 1e-10 // mag
 
-// An inverse is z as a function of w over a piece, one cubic or more in each of
-// equal steps of w. A cubic that does not return w to within sure even so,
-// because K has a kink there or w turns, is all NaN.
+// An inverse is z as a function of w over a piece, a cubic in each of equal
+// steps of w.
 type inverse struct {
-	from, scale float64 // w of the first step, steps a magnitude
-	steps       []step
-	cubics      []cubic
+	from, scale float64 // w of the first cell, cells a magnitude
+	cells       []cell
 }
 
-// A step holds n cubics from off on.
-type step struct{ off, n int32 }
+// A cell has z as a cubic in 0 ≤ u ≤ 1, and a hint of what q does to K at both
+// ends.
+type cell struct {
+	cubic
+	hints [2]hint
+	sure  bool // the cubic returns its w; elsewhere it is a first guess
+}
 
 // A cubic is one in 0 ≤ u ≤ 1.
 type cubic [4]float64
+
+// A hint says that K(q(1+z)-1) - K(z) is about (q-1) (first + (q-1) second), in
+// mag.
+type hint struct{ first, second float32 }
+
+// hintStep is the q-1 over which hints difference K: the Sun's speed over c.
+const hintStep = 1.23e-3
 
 // tabulate fills the inverse of w over p.
 func (v *inverse) tabulate(c *curve, p *piece) {
@@ -40,6 +46,7 @@ func (v *inverse) tabulate(c *curve, p *piece) {
 	if p.wlo > p.whi {
 		z, last = p.zhi, p.zlo
 	}
+	near := c.hintAt(z)
 	for i := range n {
 		end := last
 		if i < n-1 {
@@ -47,49 +54,28 @@ func (v *inverse) tabulate(c *curve, p *piece) {
 			f := func(x float64) float64 { return c.at(x, 1) - w }
 			end = bracketed(f, z, v.beyond(f, z, last))
 		}
-		v.halve(c, lo+float64(i)/v.scale, z, end)
-		z = end
+		far := c.hintAt(end)
+		k, ok := v.fit(c, lo+float64(i)/v.scale, z, end)
+		v.cells = append(v.cells, cell{k, [2]hint{near, far}, ok})
+		z, near = end, far
 	}
 }
 
-// halve appends the step that begins at w, where z is from, in as many cubics
-// as it takes.
-func (v *inverse) halve(c *curve, w, from, to float64) {
-	off := len(v.cubics)
-	for n := 1; ; n *= 2 {
-		v.cubics = v.cubics[:off]
-		if v.fit(c, w, from, to, n) || n == 1<<maxHalved {
-			v.steps = append(v.steps, step{int32(off), int32(n)})
-			return
+// fit returns the cubic of the cell that begins at w, and whether it is sure.
+func (v *inverse) fit(c *curve, w, z, end float64) (k cubic, ok bool) {
+	d := end - z
+	a, b := tangent(c, z, d, v.scale), tangent(c, end, d, v.scale)
+	k = cubic{z, a, float64(3*d) - float64(2*a) - b, a + b - float64(2*d)}
+	for _, u := range [3]float64{0.25, 0.5, 0.75} {
+		at, _ := k.at(u)
+		if !(at > min(z, end) && at < max(z, end)) {
+			return cubic{z, d}, false // K has a kink there, or w turns
+		}
+		if !(math.Abs(c.at(at, 1)-(w+u/v.scale)) <= sure) {
+			return k, false
 		}
 	}
-}
-
-// fit appends n cubics for one step and reports whether all of them are sure.
-func (v *inverse) fit(c *curve, w, from, to float64, n int) (all bool) {
-	all = true
-	scale := float64(n) * v.scale
-	z := from
-	for j := range n {
-		end := to
-		if j < n-1 {
-			next := w + float64(j+1)/scale
-			end = bracketed(func(x float64) float64 { return c.at(x, 1) - next }, z, to)
-		}
-		d := end - z
-		a, b := tangent(c, z, d, scale), tangent(c, end, d, scale)
-		k := cubic{z, a, float64(3*d) - float64(2*a) - b, a + b - float64(2*d)}
-		for _, u := range [3]float64{0.25, 0.5, 0.75} {
-			at, _ := k.at(u)
-			if !(at > min(z, end) && at < max(z, end) && math.Abs(c.at(at, 1)-(w+(float64(j)+u)/scale)) <= sure) {
-				k = cubic{math.NaN(), math.NaN(), math.NaN(), math.NaN()}
-				all = false
-			}
-		}
-		v.cubics = append(v.cubics, k)
-		z = end
-	}
-	return all
+	return k, true
 }
 
 // beyond returns a place between z and end where f is not negative any more,
@@ -126,24 +112,41 @@ func (k *cubic) at(u float64) (z, slope float64) {
 	return float64(z*u) + k[0], slope
 }
 
-// at returns z(w) and dz/dw, NaN where the table does not know.
-func (v *inverse) at(w float64) (z, slope float64) {
+// find returns the cell that holds w and w's place in it, nil outside the table.
+func (v *inverse) find(w float64) (c *cell, u float64) {
 	t := float64((w - v.from) * v.scale)
-	if !(t >= 0 && t < float64(len(v.steps))) {
-		return math.NaN(), math.NaN()
+	if !(t >= 0 && t < float64(len(v.cells))) {
+		return nil, 0
 	}
 	i := int(t)
-	u, scale := t-float64(i), v.scale
-	s := v.steps[i]
-	k := s.off
-	if s.n > 1 {
-		n := float64(s.n)
-		u, scale = float64(u*n), float64(scale*n)
-		j := min(int32(u), s.n-1)
-		k, u = k+j, u-float64(j)
+	return &v.cells[i], t - float64(i)
+}
+
+// at returns z(w), and whether that is sure; NaN outside the table.
+func (v *inverse) at(w float64) (z float64, ok bool) {
+	c, u := v.find(w)
+	if c == nil {
+		return math.NaN(), false
 	}
-	z, slope = v.cubics[k].at(u)
-	return z, float64(slope * scale)
+	z, _ = c.at(u)
+	return z, c.sure
+}
+
+// guess returns about where w and what q = 1+e adds to it make limit.
+func (v *inverse) guess(limit, e float64) float64 {
+	c, u := v.find(limit)
+	if c == nil {
+		return math.NaN()
+	}
+	near := c.hints[0].shift(e)
+	slope := c.hints[1].shift(e) - near
+	d := float64((near + float64(slope*u)) * (1 - float64(slope*v.scale))) // where it has moved to
+	z, _ := c.at(u - float64(d*v.scale))
+	return z
+}
+
+func (h hint) shift(e float64) float64 {
+	return float64(e * (float64(h.first) + float64(e*float64(h.second))))
 }
 
 // bracketed finds the root of f between a and b, where it has opposite signs,

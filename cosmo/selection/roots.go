@@ -20,6 +20,8 @@ type Rows struct {
 	Template []int32 // index of the row's K-correction, -1 for none; nil: the only one
 
 	Faint, Bright []float64 // limits of each row, in place of the selection's; may be nil
+
+	Work *Work // nil: memory for this call alone
 }
 
 // Roots fills zmin and zmax with the redshifts between which each object would
@@ -37,19 +39,26 @@ type Rows struct {
 // row is status.Input. Other NaN stay NaN without a bit: who made them has said
 // why.
 func (s *Selection) Roots(zmin, zmax []float64, r *Rows, st []int32) {
+	w := r.Work
+	if w == nil {
+		w = new(Work)
+	}
+	w.begin()
+	var o object
 	for i := range zmin {
-		o, ok := s.object(r, i, st)
-		if !ok {
+		if !s.object(&o, r, i, st) {
 			zmin[i], zmax[i] = math.NaN(), math.NaN()
 			continue
 		}
-		if zmax[i] = o.outward(); zmax[i] != zmax[i] {
+		w.row = i
+		if zmax[i] = o.outward(w); zmax[i] != zmax[i] {
 			st[i] |= status.Coverage
 		}
-		if zmin[i] = o.inward(); zmin[i] != zmin[i] {
+		if zmin[i] = o.inward(w); zmin[i] != zmin[i] {
 			st[i] |= status.Coverage
 		}
 	}
+	w.finish(s.m, zmin, zmax)
 }
 
 // An object is one row with its limits turned into limits on w.
@@ -61,8 +70,8 @@ type object struct {
 	lo, hi        float64 // where w is known
 }
 
-// object sets a row up; ok is false if it has no roots.
-func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
+// object sets o up for a row; false if it has no roots.
+func (s *Selection) object(o *object, r *Rows, i int, st []int32) bool {
 	bright, faint := s.limits.Bright, s.limits.Faint
 	if r.Bright != nil {
 		bright = r.Bright[i]
@@ -72,24 +81,24 @@ func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
 	}
 	if bright != bright || faint != faint {
 		st[i] |= status.Input
-		return o, false
+		return false
 	}
 	z, m, w := r.Z[i], r.Apparent[i], r.Offset[i]
 	if !(z > 0) || m != m || w != w {
-		return o, false
+		return false
 	}
 	if !(z >= s.limits.Zmin && z <= s.limits.Zmax && m >= bright && m <= faint) {
 		st[i] |= status.Selection
-		return o, false
+		return false
 	}
 	t := int32(0)
 	if r.Template != nil {
 		if t = r.Template[i]; t < 0 {
-			return o, false
+			return false
 		}
 	}
 	c := s.curves[t]
-	o = object{c: c, l: &s.limits, z: z, q: 1, lo: c.zlo, hi: c.zhi}
+	o.c, o.l, o.z, o.q, o.lo, o.hi = c, &s.limits, z, 1, c.zlo, c.zhi
 	if r.ObsRatio != nil {
 		o.q = r.ObsRatio[i]
 		w -= r.Shift[i] // in mu for every z alike
@@ -98,20 +107,20 @@ func (s *Selection) object(r *Rows, i int, st []int32) (o object, ok bool) {
 		if k, same := c.k.Scale(o.q); same {
 			w -= k
 			o.q = 1
-		} else {
+		} else if !c.everywhere || math.Abs(o.q-1) > near {
 			o.lo, o.hi = c.covered(&s.limits, o.q)
 		}
 	}
 	o.bright, o.faint = w+(bright-m), w+(faint-m)
 	if len(c.pieces) == 0 {
 		st[i] |= status.Coverage
-		return o, false
+		return false
 	}
-	return o, true
+	return true
 }
 
 // outward finds zmax: from z up, the first place where w leaves [bright, faint].
-func (o *object) outward() float64 {
+func (o *object) outward(work *Work) float64 {
 	c, from, last := o.c, o.z, len(o.c.pieces)-1
 	for i := c.pieceAt(o.z); i <= last; i++ {
 		p := &c.pieces[i]
@@ -122,7 +131,7 @@ func (o *object) outward() float64 {
 			o.turnNear(&way)
 		}
 		if limit, ok := o.crossed(&way); ok {
-			return max(o.root(p, limit, from, max(way.end, from)), o.z)
+			return o.root(work, p, limit, from, max(way.end, from), false)
 		}
 		from = max(way.end, from)
 	}
@@ -133,7 +142,7 @@ func (o *object) outward() float64 {
 }
 
 // inward finds zmin: from z down, the first place where w leaves [bright, faint].
-func (o *object) inward() float64 {
+func (o *object) inward(work *Work) float64 {
 	c, from := o.c, o.z
 	if o.bright < -math.MaxFloat64 && len(c.pieces) == 1 && c.pieces[0].whi > c.pieces[0].wlo {
 		return o.l.Zmin // nearer is brighter, and there is no bright limit
@@ -147,7 +156,7 @@ func (o *object) inward() float64 {
 			o.turnNear(&way)
 		}
 		if limit, ok := o.crossed(&way); ok {
-			return min(o.root(p, limit, from, min(way.end, from)), o.z)
+			return o.root(work, p, limit, from, min(way.end, from), true)
 		}
 		from = min(way.end, from)
 	}
@@ -209,40 +218,20 @@ func (o *object) crossed(v *way) (limit float64, ok bool) {
 	return limit, v.w < limit
 }
 
-// rounding is how far off, relatively, a z of the inverse may be.
-const rounding = 1e-10
-
-// root finds where w is equal to limit, between from and end.
-func (o *object) root(p *piece, limit, from, end float64) float64 {
-	lo, hi := min(from, end), max(from, end)
-	z := o.tabulated(&p.inverse, limit)
-	if z >= lo-float64(rounding*lo) && z <= hi+float64(rounding*hi) {
-		return min(max(z, lo), hi)
-	}
-	return bracketed(func(x float64) float64 { return o.c.at(x, o.q) - limit }, from, end)
-}
-
-// tabulated reads the root off the inverse, NaN where it cannot. Where K
-// depends on q, the difference that q makes to K is read at the root so far and
-// the root again with it. That difference is nearly proportional to 1+z, which
-// is put into each step; steps shrink by a factor of some hundreds, and the last
-// is the one whose successor, by that factor, does not matter.
-func (o *object) tabulated(v *inverse, limit float64) float64 {
-	z, slope := v.at(limit)
+// root finds where w is equal to limit, between from and end, nearer than the
+// object or farther. Where the inverse is not sure it leaves a task instead.
+func (o *object) root(work *Work, p *piece, limit, from, end float64, near bool) float64 {
+	var z float64
 	if o.q == 1 {
-		return z
-	}
-	const nothing = sure / 2 // mag
-	k, d, before := o.c.k, 0.0, 1.0
-	for range 8 {
-		growth := slope / (1 + z) // of the difference, in parts of it, by w
-		now := k.Value(float64(o.q*(1+z))-1) - k.Value(z)
-		step := float64((now - d) * (1 - float64(now*growth))) // 1/(1+x), x of a few 1e-3
-		d += step
-		if z, slope = v.at(limit - d); z != z || step*step <= nothing*before {
-			return z
+		var sure bool
+		z, sure = p.inverse.at(limit)
+		lo, hi := min(from, end), max(from, end)
+		if sure && z >= lo-float64(rounding*lo) && z <= hi+float64(rounding*hi) {
+			return min(max(z, lo), hi)
 		}
-		before = math.Abs(step)
+	} else {
+		z = p.inverse.guess(limit, o.q-1)
 	}
-	return math.NaN()
+	work.add(o, limit, from, end, z, near)
+	return o.z
 }

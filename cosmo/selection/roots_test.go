@@ -209,6 +209,7 @@ func BenchmarkRoots(b *testing.B) {
 					r.ObsRatio[i], r.Shift[i] = q, 5*math.Log10(q)
 					r.Offset[i] = w(m, k, photo.Evolution{Q: 1}, r.Z[i], q, 1)
 				}
+				r.Work = new(Work)
 				zmin, zmax, st := make([]float64, n), make([]float64, n), make([]int32, n)
 				b.ReportAllocs()
 				report := cpu(b, n)

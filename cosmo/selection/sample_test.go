@@ -85,7 +85,7 @@ func vOverVmax(m *cosmo.Model, k photo.Correction, lim Limits, r *Rows, t *testi
 	zmin, zmax, st := make([]float64, n), make([]float64, n), make([]int32, n)
 	New(m, photo.Single(k), photo.Evolution{}, lim).Roots(zmin, zmax, r, st)
 	v = Volumes{Vmax: make([]float64, n), OverVmax: make([]float64, n), Weight: make([]float64, n)}
-	(&Survey{Area: 1200}).Fill(&v, m, r.Z, zmin, zmax, st)
+	fillVolumes(&Survey{Area: 1200}, &v, m, r.Z, zmin, zmax, st)
 	for i, x := range v.OverVmax {
 		if st[i] != 0 || !(x >= 0 && x <= 1) {
 			t.Fatalf("row %d: z %v, [%v, %v]: V/Vmax %v, status %d", i, r.Z[i], zmin[i], zmax[i], x, st[i])
@@ -201,7 +201,7 @@ func TestVolumesStatus(t *testing.T) {
 	s := &Survey{Per: []float64{100, 0, 100, 100, 100}, Completeness: []float64{0.5, 1, 0, 1, 1}}
 	v := Volumes{Vmax: make([]float64, 5), OverVmax: make([]float64, 5), Weight: make([]float64, 5)}
 	st := make([]int32, 5)
-	s.Fill(&v, m, z, lo, hi, st)
+	fillVolumes(s, &v, m, z, lo, hi, st)
 	for i, want := range []int32{0, status.Input, status.Input, status.Selection, 0} {
 		if st[i] != want {
 			t.Errorf("row %d: status %d, want %d", i, st[i], want)
@@ -247,4 +247,13 @@ func TestLimitsAreChecked(t *testing.T) {
 	if math.Abs(WholeSky-4*math.Pi*(180/math.Pi)*(180/math.Pi)) > 1e-11 {
 		t.Error("the sky is not whole")
 	}
+}
+
+// fillVolumes takes the steps from roots to volumes.
+func fillVolumes(s *Survey, v *Volumes, m *cosmo.Model, z, zmin, zmax []float64, st []int32) {
+	var own cosmo.Base
+	m.Fill(&own, cosmo.Volume, z)
+	low, all := make([]float64, len(z)), make([]float64, len(z))
+	Shells(low, all, m, zmin, zmax, new(Work), st)
+	s.Fill(v, m.HubbleDistance(), own.Volume, low, all, st)
 }

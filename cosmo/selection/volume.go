@@ -26,6 +26,23 @@ type Survey struct {
 	Completeness []float64
 }
 
+// Shells fills low with V_C(z_min) and all with V_C(z_max) - V_C(z_min), the
+// comoving volumes of the whole sky in the model, in cubed Hubble distances. An
+// interval without volume gives NaN and status.Selection.
+func Shells(low, all []float64, m Model, zmin, zmax []float64, w *Work, st []int32) {
+	all, st = all[:len(low)], st[:len(low)]
+	m.Fill(&w.base, cosmo.Volume, zmin)
+	copy(low, w.base.Volume)
+	m.Fill(&w.base, cosmo.Volume, zmax)
+	for i, v := range w.base.Volume[:len(low)] {
+		all[i] = v - low[i]
+		if all[i] <= 0 {
+			st[i] |= status.Selection
+			all[i] = math.NaN()
+		}
+	}
+}
+
 // Volumes are the columns of a selection; a nil slice is not filled.
 type Volumes struct {
 	Vmax     []float64 // Mpc3
@@ -39,25 +56,21 @@ type Volumes struct {
 //	V/Vmax = [V_C(z) - V_C(z_min)] / [V_C(z_max) - V_C(z_min)]
 //	weight = 1/(C V_max)
 //
-// (Schmidt 1968; Felten 1976), with V_C the comoving volume of the whole sky in
-// the model m. z is z_cos. An interval without volume gives NaN and
-// status.Selection; an area or a completeness that is missing, not positive, or
-// above the whole sky or 1 gives NaN and status.Input.
-func (s *Survey) Fill(v *Volumes, m Model, z, zmin, zmax []float64, st []int32) {
-	unit := cube(m.HubbleDistance())
-	for i := range z {
-		low := volume(m, zmin[i])
-		all := volume(m, zmax[i]) - low
-		if all <= 0 {
-			st[i] |= status.Selection
-			all = math.NaN()
+// (Schmidt 1968; Felten 1976) from what [Shells] has filled and own, V_C at the
+// row's own z_cos. hubble is the Hubble distance in Mpc. An area or a
+// completeness that is missing, not positive, or above the whole sky or 1 gives
+// NaN and status.Input.
+func (s *Survey) Fill(v *Volumes, hubble float64, own, low, all []float64, st []int32) {
+	if v.OverVmax != nil {
+		for i := range v.OverVmax {
+			v.OverVmax[i] = (own[i] - low[i]) / all[i]
 		}
-		if v.OverVmax != nil {
-			v.OverVmax[i] = (m.At(cosmo.Volume, z[i]) - low) / all
-		}
-		if v.Vmax == nil && v.Weight == nil {
-			continue
-		}
+	}
+	if v.Vmax == nil && v.Weight == nil {
+		return
+	}
+	unit := cube(hubble)
+	for i := range all {
 		area := s.Area
 		if s.Per != nil {
 			area = s.Per[i]
@@ -66,7 +79,7 @@ func (s *Survey) Fill(v *Volumes, m Model, z, zmin, zmax []float64, st []int32) 
 			st[i] |= status.Input
 			area = math.NaN()
 		}
-		vmax := area / WholeSky * unit * all
+		vmax := area / WholeSky * unit * all[i]
 		if v.Vmax != nil {
 			v.Vmax[i] = vmax
 		}
@@ -74,14 +87,6 @@ func (s *Survey) Fill(v *Volumes, m Model, z, zmin, zmax []float64, st []int32) 
 			v.Weight[i] = 1 / (s.completeness(i, st) * vmax)
 		}
 	}
-}
-
-// volume is V_C in cubed Hubble distances, 0 at z = 0.
-func volume(m Model, z float64) float64 {
-	if z == 0 {
-		return 0
-	}
-	return m.At(cosmo.Volume, z)
 }
 
 func cube(x float64) float64 { return x * x * x }

@@ -26,42 +26,78 @@ import (
 	"catenrich/cosmo"
 )
 
-// Sigmas are the errors of a batch of redshifts.
+// Sigmas are the errors of a batch of redshifts. The zero value is ready for
+// [Sigmas.Set].
 type Sigmas struct {
-	Z  []float64 // σ_z of the input redshift
-	In []float64 // z_in, in the frame that σ_z is in
-
-	// Floor is σ_v, the scatter of peculiar velocities, km/s; 0: none. Velocity,
-	// if not nil, is an error of each row's own peculiar velocity, km/s.
-	Floor    float64
-	Velocity []float64
+	measured []float64 // σ of ln(1+z), all redshifts together
+	floor    float64   // variance of ln(1+z_cos) alone
+	peculiar []float64 // the same row by row, in place of floor; nil: none
+	total    []float64 // σ of ln(1+z_cos): the root of the sum of both variances
+	memory   [3][]float64
 }
 
-// Measured returns σ of ln(1+z), all redshifts together, of row i.
-func (s *Sigmas) measured(i int) float64 { return s.Z[i] / (1 + s.In[i]) }
-
-// peculiar returns the variance of ln(1+z_cos) alone of row i.
-func (s *Sigmas) peculiar(i int) float64 {
-	v := s.Floor / cosmo.SpeedOfLight
-	variance := float64(v * v)
-	if s.Velocity != nil {
-		u := s.Velocity[i] / cosmo.SpeedOfLight
-		variance += float64(u * u)
+// Set takes the errors z of the redshifts in, in the frame that they were
+// measured in; the scatter floor of peculiar velocities, km/s, 0 for none; and
+// the error of each row's own peculiar velocity, km/s, nil for none. It keeps
+// no slice.
+func (s *Sigmas) Set(z, in []float64, floor float64, velocity []float64) {
+	for i := range s.memory {
+		if cap(s.memory[i]) < len(z) {
+			s.memory[i] = make([]float64, len(z))
+		}
 	}
-	return variance
+	v := floor / cosmo.SpeedOfLight
+	s.floor = float64(v * v)
+	s.measured, s.total, s.peculiar = s.memory[0][:len(z)], s.memory[1][:len(z)], nil
+	if velocity != nil {
+		s.peculiar = s.memory[2][:len(z)]
+		for i, v := range velocity {
+			u := v / cosmo.SpeedOfLight
+			s.peculiar[i] = s.floor + float64(u*u)
+		}
+	}
+	for i := range z {
+		m := z[i] / (1 + in[i])
+		s.measured[i] = m
+		s.total[i] = math.Sqrt(float64(m*m) + s.alone(i))
+	}
+}
+
+// Total returns σ of ln(1+z_cos) of each row.
+func (s *Sigmas) Total() []float64 { return s.total }
+
+// alone returns the variance of ln(1+z_cos) alone of row i.
+func (s *Sigmas) alone(i int) float64 {
+	if s.peculiar != nil {
+		return s.peculiar[i]
+	}
+	return s.floor
 }
 
 // Fill fills sx with the standard errors of the quantity whose partials are p,
 // from the redshift and peculiar velocities only.
 func (s *Sigmas) Fill(sx []float64, p *Partial) {
+	cos := p.Cos[:len(sx)]
+	if p.Alone {
+		total := s.total[:len(sx)]
+		for i := range sx {
+			sx[i] = math.Abs(cos[i] * total[i])
+		}
+		return
+	}
 	for i := range sx {
 		sx[i] = math.Sqrt(s.variance(p, i))
 	}
 }
 
 func (s *Sigmas) variance(p *Partial, i int) float64 {
-	a := (p.Cos[i] + p.Rest[i]) * s.measured(i)
-	return float64(a*a) + float64(p.Cos[i]*p.Cos[i]*s.peculiar(i))
+	cos := p.Cos[i]
+	both := cos
+	if !p.Alone {
+		both += p.Rest[i]
+	}
+	a := both * s.measured[i]
+	return float64(a*a) + float64(cos*cos*s.alone(i))
 }
 
 // FillWith is Fill with further, independent variances: extra adds the

@@ -109,16 +109,28 @@ func (v *Interval) Fill(lo, hi []float64, t Turns) {
 			lo[i], hi[i] = math.NaN(), math.NaN()
 			continue
 		}
-		low, high := min(a, b, x), max(a, b, x)
-		for j, z := range t.Z {
+		if a > b {
+			a, b = b, a
+		}
+		if x < a {
+			a = x
+		} else if x > b {
+			b = x
+		}
+		lo[i], hi[i] = a, b
+	}
+	for j, z := range t.Z {
+		for i := range lo {
 			if z > v.Zlo[i] && z < v.Zhi[i] {
-				y := float64(t.X[j] * at(v.Scale, i))
+				y := t.X[j]
+				if v.Scale != nil {
+					y = float64(y * v.Scale[i])
+				}
 				if v.Shift != nil {
 					y += v.Shift[i]
 				}
-				low, high = min(low, y), max(high, y)
+				lo[i], hi[i] = min(lo[i], y), max(hi[i], y) // NaN stays
 			}
 		}
-		lo[i], hi[i] = low, high
 	}
 }

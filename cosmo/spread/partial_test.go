@@ -146,7 +146,8 @@ func TestPartials(t *testing.T) {
 func TestPeculiarVelocityFloor(t *testing.T) {
 	m := model(t, testModels["flat"])
 	p := partials(m, []row{{0.01, 1, 1}}, photo.None{}, photo.Evolution{})["modulus"]
-	s := Sigmas{Z: []float64{0}, In: []float64{0.01}, Floor: 250}
+	var s Sigmas
+	s.Set([]float64{0}, []float64{0.01}, 250, nil)
 	got := []float64{0}
 	s.Fill(got, p)
 	if want := 0.183; math.Abs(got[0]-want) > 0.02*want {
@@ -168,7 +169,8 @@ func TestMonteCarlo(t *testing.T) {
 	p := partials(m, []row{{z, q, frame}}, k, e)["absolute"]
 	variance := []float64{0}
 	MagnitudeVariance(variance, []float64{sigmaM}, []float64{sigmaA}, r, []float64{sigmaEBV})
-	s := Sigmas{Z: []float64{sigmaZ}, In: []float64{zin}, Floor: floor}
+	var s Sigmas
+	s.Set([]float64{sigmaZ}, []float64{zin}, floor, nil)
 	sM, sL := []float64{0}, []float64{0}
 	s.FillWith(sM, p, variance)
 	lum := []float64{math.Pow(10, -0.4*(cols["absolute"](row{z, q, frame})-4.65))}

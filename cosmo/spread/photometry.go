@@ -20,21 +20,23 @@ func Correction(p *Partial, slope, zobs []float64) {
 
 // Evolution is the partial of e = -Q (z_cos - z0). Needs X.
 func (n *Inputs) Evolution(p *Partial, e photo.Evolution) {
-	for i := range p.Cos {
-		p.Cos[i], p.Rest[i] = -e.Q*n.Base.X[i], 0
-	}
+	p.times(n.Base.X, -e.Q)
 }
 
 // AbsoluteMagnitude is the partial of M = m - A - mu - K - e: mu, K and e share
 // one redshift, so their derivatives are added with their signs. slope is dK/dz
 // at zobs, nil for a K that does not know the redshift. Needs DC, DM, Slope, E.
 func (n *Inputs) AbsoluteMagnitude(p *Partial, slope, zobs []float64, e photo.Evolution) {
-	for i := range p.Cos {
-		p.Cos[i] = float64(e.Q*n.Base.X[i]) - float64(perMag*(n.distance(i)-1))
+	x := n.Base.X
+	for i, d := range n.distance() {
+		p.Cos[i] = float64(e.Q*x[i]) - float64(perMag*(d-1))
 		p.Rest[i] = -2 * perMag
-		if slope != nil {
-			p.Rest[i] -= float64(slope[i] * (1 + zobs[i]))
-		}
+	}
+	if slope == nil {
+		return
+	}
+	for i := range p.Rest {
+		p.Rest[i] -= float64(slope[i] * (1 + zobs[i]))
 	}
 }
 
@@ -70,12 +72,12 @@ func Luminosities(sl, l, sigmaM []float64) {
 // with alpha: L (1+z_obs)^-(1+α). For a line alpha is -1. alphas, if not nil, is
 // each row's own. Needs DC, DM, Slope, E.
 func (n *Inputs) LineLuminosity(p *Partial, l []float64, alpha float64, alphas []float64) {
-	for i := range p.Cos {
+	for i, d := range n.distance() {
 		a := alpha
 		if alphas != nil {
 			a = alphas[i]
 		}
-		p.Cos[i] = 2 * l[i] * (n.distance(i) - 1)
+		p.Cos[i] = 2 * l[i] * (d - 1)
 		p.Rest[i] = l[i] * (3 - a)
 	}
 }
@@ -83,8 +85,9 @@ func (n *Inputs) LineLuminosity(p *Partial, l []float64, alpha float64, alphas [
 // Size is the partial of a proper size θ D_A: d is the size. Needs DC, DM,
 // Slope, E.
 func (n *Inputs) Size(p *Partial, d []float64) {
-	for i := range p.Cos {
-		p.Cos[i], p.Rest[i] = d[i]*(n.distance(i)-1), 0
+	p.Alone = true
+	for i, slope := range n.distance() {
+		p.Cos[i] = d[i] * (slope - 1)
 	}
 }
 

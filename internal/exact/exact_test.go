@@ -232,3 +232,20 @@ func BenchmarkExp(b *testing.B) {
 	}
 	b.ReportMetric(b.Elapsed().Seconds()*1e9/float64(2048*b.N), "ns/row")
 }
+
+// TestSinCos holds that both at once have the bits of each alone.
+func TestSinCos(t *testing.T) {
+	rng := rand.New(rand.NewPCG(6, 7))
+	angles := []float64{0, math.Copysign(0, -1), 1e-300, 0x1p-28, math.Pi / 4, math.Nextafter(math.Pi/4, 1), math.Pi / 2, math.Pi, 1 << 20, 1<<20 + 1, math.Inf(1), math.NaN()}
+	for range 100_000 {
+		angles = append(angles, 20*(rng.Float64()-0.5))
+	}
+	for _, x := range angles {
+		for _, x := range []float64{x, -x} {
+			sin, cos := SinCos(x)
+			if math.Float64bits(sin) != math.Float64bits(Sin(x)) || math.Float64bits(cos) != math.Float64bits(Cos(x)) {
+				t.Fatalf("SinCos(%v) = %v, %v, want %v, %v", x, sin, cos, Sin(x), Cos(x))
+			}
+		}
+	}
+}

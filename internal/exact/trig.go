@@ -6,11 +6,9 @@ import "math"
 // quarter turns has 21 bits and its products with the parts of pi/2 are exact.
 const maxAngle = 0x1p20
 
-// quarterTurns writes x as n pi/2 + r + rl with |r| <= pi/4.
+// quarterTurns writes x as n pi/2 + r + rl with |r| <= pi/4; for |x| <= pi/4 that
+// is x itself.
 func quarterTurns(x float64) (n int, r, rl float64) {
-	if math.Abs(x) <= piOver4 {
-		return 0, x, 0
-	}
 	q := float64(x*twoOverPi) + shifter - shifter
 	// Cody & Waite: pi/2 in three parts of 30 bits and a fourth
 	a, e1 := twoSum(x-float64(q*piOver2A), -float64(q*piOver2B))
@@ -84,6 +82,24 @@ func Cos(x float64) float64 {
 	default:
 		return sinPart(r, rl)
 	}
+}
+
+// SinCos returns both [Sin] and [Cos] of x, to the same bits, and reduces the
+// angle once.
+func SinCos(x float64) (sin, cos float64) {
+	switch a := math.Abs(x); {
+	case !(a <= maxAngle):
+		return math.NaN(), math.NaN()
+	case a < 0x1p-27:
+		return x, 1
+	}
+	n, r, rl := quarterTurns(x)
+	// By bits, not by branches, which nobody could predict.
+	s, c := math.Float64bits(sinPart(r, rl)), math.Float64bits(cosPart(r, rl))
+	swap := (s ^ c) & -uint64(n&1)
+	sin = math.Float64frombits(s ^ swap ^ uint64(n&2)<<62)
+	cos = math.Float64frombits(c ^ swap ^ uint64((n+1)&2)<<62)
+	return sin, cos
 }
 
 // atanRatio returns atan(a/b) for 0 <= a <= b, 0 < b, in two parts, expanded

@@ -23,7 +23,7 @@ type Base struct {
 	item      int // member of the family at hand
 
 	angularMemo, luminosityMemo, mpcMemo, modulusMemo, logSlopeMemo memo
-	absoluteMemo                                                    []memo // of each band
+	absoluteMemo, sigmaMemo                                         []memo // of each band
 
 	inputs        spread.Inputs // of errors
 	partial       spread.Partial
@@ -53,7 +53,7 @@ func newBase(r *Rows, k *Kernel) Base {
 		spare: make([]float64, span), spare2: make([]float64, span),
 	}
 	for range r.bands {
-		b.absoluteMemo = append(b.absoluteMemo, newMemo())
+		b.absoluteMemo, b.sigmaMemo = append(b.absoluteMemo, newMemo()), append(b.sigmaMemo, newMemo())
 	}
 	return b
 }
@@ -61,16 +61,16 @@ func newBase(r *Rows, k *Kernel) Base {
 // begin forgets what was computed for another model or span.
 func (b *Base) begin(m *model) {
 	b.model, b.Scales, b.surveyors = m.Model, &m.scales, m.surveyors
-	b.inputs = spread.Inputs{
-		HubbleDistance: m.scales.Length, HubbleTime: m.scales.Time, H0: m.h0, Antipode: m.antipode, Base: &b.Base,
-		ObsRatio: b.Rows.ObsRatio, FrameRatio: b.Rows.FrameRatio,
-	}
+	in := &b.inputs
+	in.HubbleDistance, in.HubbleTime, in.H0, in.Antipode = m.scales.Length, m.scales.Time, m.h0, m.antipode
+	in.Base, in.ObsRatio, in.FrameRatio = &b.Base, b.Rows.ObsRatio, b.Rows.FrameRatio
+	in.Begin()
 	b.angularMemo.done, b.luminosityMemo.done, b.mpcMemo.done, b.modulusMemo.done, b.logSlopeMemo.done = false, false, false, false, false
 	for i := range b.absoluteMemo {
-		b.absoluteMemo[i].done = false
+		b.absoluteMemo[i].done, b.sigmaMemo[i].done = false, false
 	}
 	for i := range b.Rows.selections {
-		b.Rows.selections[i].done = false
+		b.Rows.selections[i].done, b.Rows.selections[i].shells.done = false, false
 	}
 }
 
@@ -115,9 +115,9 @@ func (b *Base) modulus() []float64 {
 	if filled {
 		return v
 	}
-	d := b.luminosity()
-	for i := range v {
-		v[i] = b.Scales.Modulus + float64(5*exact.Log10(d[i]))
+	exact.Log10Slice(v, b.luminosity())
+	for i, l := range v {
+		v[i] = b.Scales.Modulus + float64(5*l)
 	}
 	return v
 }

@@ -131,9 +131,8 @@ func (s *Scratch) blur(e *Entry, m *model, n int) []float64 {
 // sizeErrors turns sizes of values into those of their errors, which vanish
 // where a quantity turns.
 func (r *Rows) sizeErrors(sizes []float64) {
-	floor := r.sigmas.Floor / cosmo.SpeedOfLight
-	for i := range sizes {
-		sizes[i] *= math.Hypot(r.sigmas.Z[i]/(1+r.sigmas.In[i]), floor)
+	for i, total := range r.sigmas.Total() {
+		sizes[i] *= total
 	}
 }
 

@@ -199,9 +199,10 @@ type Scratch struct {
 	rows  Rows
 	base  Base
 
-	low, high *rim         // of intervals; nil where the job has none
-	ends      [5][]float64 // of the interval at hand
-	sizes     [][]float64  // of each column, as Judge returns them; nil while running
+	low, high  *rim         // of intervals; nil where the job has none
+	ends       [5][]float64 // of the interval at hand
+	intervalOf place        // whose that is
+	sizes      [][]float64  // of each column, as Judge returns them; nil while running
 }
 
 // Run computes every added column of a decoded batch, and counts it.
@@ -296,6 +297,7 @@ func (k *Kernel) compute(b *table.Batch, s *Scratch, lo, hi int) {
 		m.Fill(&s.base.Base, m.uses, s.rows.ZModel)
 		s.base.begin(m)
 		if s.low != nil {
+			s.intervalOf = place{}
 			for _, r := range []*rim{s.low, s.high} {
 				m.Fill(&r.base.Base, m.rimUses, r.rows.ZModel)
 				r.base.begin(m)
@@ -343,6 +345,9 @@ func (s *Scratch) numbers(o output, m *model, out []float64) {
 	default:
 		s.interval(o, m, out)
 	}
+	if finite(out) {
+		return
+	}
 	for i, v := range out {
 		if math.Abs(v) <= math.MaxFloat64 {
 			continue
@@ -354,6 +359,23 @@ func (s *Scratch) numbers(o output, m *model, out []float64) {
 			rows.blameSpread(o, i)
 		}
 	}
+}
+
+// finite reports whether every number is. v - v is 0 or NaN, and four sums wait
+// for one another less than one does.
+func finite(v []float64) bool {
+	var a, b, c, d float64
+	for len(v) >= 4 {
+		a += v[0] - v[0]
+		b += v[1] - v[1]
+		c += v[2] - v[2]
+		d += v[3] - v[3]
+		v = v[4:]
+	}
+	for _, x := range v {
+		a += x - x
+	}
+	return a+b+c+d == 0
 }
 
 // blame gives the reason for a null cell. Mostly the row's bits explain it: it

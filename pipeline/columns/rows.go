@@ -26,6 +26,9 @@ type Rows struct {
 	// all redshifts are the same.
 	ObsRatio, FrameRatio, Shift []float64
 
+	// pace is dz_cos/dz_in, paceObs dz_obs/dz_in; of intervals only.
+	pace, paceObs []float64
+
 	Toward frame.Vectors // unit vectors, where a column or the frame needs them
 
 	bands                []bandRows
@@ -42,11 +45,12 @@ type rowBuffers struct {
 	zIn, zFrame, zObs, zCos, zModel []float64
 	obsRatio, frameRatio, shift     []float64
 	ra, dec, scratch, sigma         []float64
+	pace, paceObs                   []float64
 }
 
 func (b *rowBuffers) allocate() {
 	for _, buffer := range []*[]float64{
-		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.obsRatio, &b.frameRatio, &b.shift, &b.ra, &b.dec, &b.scratch, &b.sigma,
+		&b.zIn, &b.zFrame, &b.zObs, &b.zCos, &b.zModel, &b.obsRatio, &b.frameRatio, &b.shift, &b.ra, &b.dec, &b.scratch, &b.sigma, &b.pace, &b.paceObs,
 	} {
 		*buffer = make([]float64, span)
 	}

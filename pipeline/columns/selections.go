@@ -90,6 +90,9 @@ type selectionRows struct {
 	area       []float64
 	zMin, zMax []float64
 	done       bool // for the model at hand
+	shells     memo // V_C(z_max) - V_C(z_min)
+	inner      []float64
+	work       selection.Work
 }
 
 // limitRows is one band's part of a selection.
@@ -104,7 +107,7 @@ type limitRows struct {
 func newSelectionRows(p *job.SelectionPlan, bands []job.BandPlan, where func(job.Role) int, used bool) selectionRows {
 	s := selectionRows{
 		used: used, completeness: where(job.SelectionRole(p.Name, job.PartCompleteness)), field: where(job.SelectionRole(p.Name, job.PartField)),
-		areas: p.FieldAreas, zMin: make([]float64, span), zMax: make([]float64, span), area: make([]float64, span),
+		areas: p.FieldAreas, zMin: make([]float64, span), zMax: make([]float64, span), area: make([]float64, span), shells: newMemo(), inner: make([]float64, span),
 	}
 	s.survey.Area = p.Area
 	for i := range p.Limits {
@@ -185,7 +188,7 @@ func (b *Base) limitRoots(s *selectionRows, i int, zMin, zMax []float64) {
 	k := band.k
 	rows := selection.Rows{
 		Z: r.ZModel, Apparent: l.apparent, Offset: l.offset, ObsRatio: r.ObsRatio, Shift: r.Shift,
-		Template: band.template, Faint: l.faintRows, Bright: l.brightRows,
+		Template: band.template, Faint: l.faintRows, Bright: l.brightRows, Work: &s.work,
 	}
 	if l.k != nil {
 		k = l.k[:n]
@@ -209,7 +212,12 @@ func (b *Base) limitRoots(s *selectionRows, i int, zMin, zMax []float64) {
 // volumes fills what v asks for.
 func (b *Base) volumes(v *selection.Volumes) {
 	s := b.roots()
-	s.survey.Fill(v, b.model, b.Rows.ZModel, s.zMin, s.zMax, b.Rows.Status)
+	all, filled := s.shells.ask(len(b.Rows.ZModel))
+	inner := s.inner[:len(all)]
+	if !filled {
+		selection.Shells(inner, all, b.model, s.zMin, s.zMax, &s.work, b.Rows.Status)
+	}
+	s.survey.Fill(v, b.model.HubbleDistance(), b.Volume, inner, all, b.Rows.Status)
 }
 
 // cut fills the flags of a volume-limited sample.

@@ -111,23 +111,29 @@ func modulusDisplaced(b *Base, _, shift []float64) {
 func contactLostError(b *Base, out []float64) {
 	p := b.partials(len(out))
 	b.model.ContactLostSlope(p.Cos, &b.Base)
-	for i := range p.Cos {
-		p.Cos[i] *= b.Scales.Time
-		p.Rest[i] = 0
-	}
+	p.Alone = true
+	scale(p.Cos, p.Cos, b.Scales.Time)
 	b.Rows.sigmas.Fill(out, p)
 }
 
 // absoluteError is the error of an absolute magnitude: mu, K and e share one
 // redshift, so their derivatives are added with signs before squaring.
-func absoluteError(b *Base, out []float64) {
+func absoluteError(b *Base, out []float64) { copy(out, b.sigmaAbsolute()) }
+
+// sigmaAbsolute returns these errors for the band at hand, which those of
+// luminosities come from too.
+func (b *Base) sigmaAbsolute() []float64 {
 	band := b.band()
-	b.inputs.AbsoluteMagnitude(b.partials(len(out)), band.slopes(), b.Rows.ZObs, band.plan.Evolution)
-	b.Rows.sigmas.FillWith(out, &b.partial, band.variance)
+	v, filled := b.sigmaMemo[b.item].ask(len(b.Rows.ZModel))
+	if !filled {
+		b.inputs.AbsoluteMagnitude(b.partials(len(v)), band.slopes(), b.Rows.ZObs, band.plan.Evolution)
+		b.Rows.sigmas.FillWith(v, &b.partial, band.variance)
+	}
+	return v
 }
 
 func luminosityError(b *Base, out []float64) {
-	absoluteError(b, out)
+	copy(out, b.sigmaAbsolute())
 	values := b.spare[:len(out)]
 	photo.Luminosity(values, b.absolute(), b.band().sun)
 	spread.Luminosities(out, values, out)
@@ -149,8 +155,9 @@ func kError(b *Base, out []float64) {
 
 func evolutionError(b *Base, out []float64) {
 	p := b.partials(len(out))
+	p.Alone = true
 	for i := range p.Cos {
-		p.Cos[i], p.Rest[i] = -b.band().plan.Q*(1+b.Rows.ZCos[i]), 0
+		p.Cos[i] = -b.band().plan.Q * (1 + b.Rows.ZCos[i])
 	}
 	b.Rows.sigmas.Fill(out, p)
 }
@@ -218,7 +225,13 @@ func newErrorInput(where func(job.Role) int) errorInput {
 // fillSigmas takes the errors of the redshifts of rows lo to hi.
 func (r *Rows) fillSigmas(z *redshifter, batch *table.Batch, lo, hi int) {
 	s := r.buffers.sigma[:hi-lo]
-	r.sigmas.Z, r.sigmas.In, r.sigmas.Floor = s, r.ZIn, z.floor
+	z.sigmas(s, batch, r, lo, hi)
+	r.sigmas.Set(s, r.ZIn, z.floor, nil)
+}
+
+// sigmas fills s with the errors of the redshifts as given, 0 where the
+// catalogue has no column of them.
+func (z *redshifter) sigmas(s []float64, batch *table.Batch, r *Rows, lo, hi int) {
 	if z.errors.sigma < 0 {
 		clear(s)
 		return
@@ -257,8 +270,10 @@ func (s *Scratch) fillRims(z *redshifter, batch *table.Batch, lo, hi int) {
 	low, high := s.low.rows.buffers.zIn[:n], s.high.rows.buffers.zIn[:n]
 	copy(low, batch.In[z.errors.low].Float[lo:hi])
 	copy(high, batch.In[z.errors.high].Float[lo:hi])
-	for i := range low {
-		if !z.models(r.cosAt(i, low[i])) || !z.models(r.cosAt(i, high[i])) {
+	r.findPaces()
+	for i, pace := range r.pace {
+		z0, in := r.ZCos[i], r.ZIn[i]
+		if !z.models(moved(z0, low[i]-in, pace)) || !z.models(moved(z0, high[i]-in, pace)) {
 			low[i] = math.NaN()
 		}
 	}
@@ -267,11 +282,18 @@ func (s *Scratch) fillRims(z *redshifter, batch *table.Batch, lo, hi int) {
 	s.high.rows.moveTo(r, high)
 }
 
-// cosAt is the cosmological redshift of row i if its redshift as given were z:
+// findPaces computes how fast z_cos and z_obs move with the redshift as given:
 // at fixed position and peculiar velocity, all 1+z are proportional.
-func (r *Rows) cosAt(i int, z float64) float64 {
-	return r.ZCos[i] + float64((z-r.ZIn[i])*((1+r.ZCos[i])/(1+r.ZIn[i])))
+func (r *Rows) findPaces() {
+	n, b := len(r.ZIn), &r.buffers
+	r.pace, r.paceObs = b.pace[:n], b.paceObs[:n]
+	for i, z := range r.ZIn {
+		r.pace[i], r.paceObs[i] = (1+r.ZCos[i])/(1+z), (1+r.ZObs[i])/(1+z)
+	}
 }
+
+// moved is a redshift at pace when the redshift as given has moved by d.
+func moved(z, d, pace float64) float64 { return z + float64(d*pace) }
 
 // models reports whether the model's columns have values at a redshift.
 func (z *redshifter) models(v float64) bool {
@@ -285,18 +307,41 @@ func (r *Rows) moveTo(o *Rows, z []float64) {
 	r.ZCos, r.ZFrame = r.ZModel, r.ZModel
 	r.Status, r.Toward, r.ObsRatio, r.FrameRatio, r.Shift = o.Status, o.Toward, o.ObsRatio, o.FrameRatio, o.Shift
 	for i, v := range z {
-		r.ZModel[i] = o.cosAt(i, v)
-		r.ZObs[i] = o.ZObs[i] + float64((v-o.ZIn[i])*((1+o.ZObs[i])/(1+o.ZIn[i])))
+		d := v - o.ZIn[i]
+		r.ZModel[i], r.ZObs[i] = moved(o.ZCos[i], d, o.pace[i]), moved(o.ZObs[i], d, o.paceObs[i])
 	}
 	for i := range r.bands {
 		r.bands[i].moveTo(r, &o.bands[i])
 	}
 }
 
-// interval fills one end of a column's interval.
+// interval fills one end of a column's interval. The other end comes next, if
+// it is asked for, and is computed with it.
 func (s *Scratch) interval(o output, m *model, out []float64) {
 	n := len(out)
-	v := spread.Interval{Zlo: s.low.rows.ZModel, Zhi: s.high.rows.ZModel, Xlo: s.ends[0][:n], Xhi: s.ends[1][:n], X: s.ends[2][:n]}
+	low, high := s.ends[0][:n], s.ends[1][:n]
+	if at := (place{m, o.entry, o.item}); s.intervalOf != at {
+		s.intervalOf = at
+		s.fillInterval(o, m, low, high)
+	}
+	if o.form == LowForm {
+		copy(out, low)
+	} else {
+		copy(out, high)
+	}
+}
+
+// place names a column of a model.
+type place struct {
+	model *model
+	entry *Entry
+	item  int
+}
+
+// fillInterval fills both ends of a column's interval.
+func (s *Scratch) fillInterval(o output, m *model, low, high []float64) {
+	n := len(low)
+	v := spread.Interval{Zlo: s.low.rows.ZModel, Zhi: s.high.rows.ZModel, Xlo: low, Xhi: high, X: s.ends[2][:n]}
 	for i, base := range []*Base{&s.low.base, &s.high.base, &s.base} {
 		base.item = o.item
 		o.entry.Eval(base, s.ends[i][:n])
@@ -308,13 +353,7 @@ func (s *Scratch) interval(o output, m *model, out []float64) {
 		}
 		o.entry.Spread.Displace(&s.base, v.Scale, v.Shift)
 	}
-	low, high := s.ends[0][:n], s.ends[1][:n]
 	v.Fill(low, high, m.turns[o.at])
-	if o.form == LowForm {
-		copy(out, low)
-	} else {
-		copy(out, high)
-	}
 }
 
 // findTurns finds where a column of a model turns, at rest.

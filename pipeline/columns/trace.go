@@ -27,7 +27,7 @@ func (s *Scratch) Trace(i int) Trace {
 	t := Trace{ZIn: r.ZIn[i], ZFrame: r.ZFrame[i], ZObs: r.ZObs[i], ZCos: r.ZCos[i], ZModel: r.ZModel[i]}
 	t.SigmaZ, t.X, t.Y, t.Z = math.NaN(), math.NaN(), math.NaN(), math.NaN()
 	if s.bound.terms&errorTerm != 0 {
-		t.SigmaZ = r.sigmas.Z[i]
+		t.SigmaZ = r.buffers.sigma[i]
 	}
 	if s.bound.redshift.directions {
 		t.X, t.Y, t.Z = r.Toward.X[i], r.Toward.Y[i], r.Toward.Z[i]

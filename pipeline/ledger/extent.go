@@ -13,13 +13,17 @@ type Extent struct {
 	min, max float64
 }
 
-// Add widens the extent by every number of v.
-func (e *Extent) Add(v []float64) {
-	low, high, skipped := math.Inf(1), math.Inf(-1), 0
+// Add widens the extent by every number of v, and returns how many cells of v
+// hold none.
+func (e *Extent) Add(v []float64) (skipped int) {
+	low, high := math.Inf(1), math.Inf(-1)
 	if e.count > 0 {
 		low, high = e.min, e.max
 	}
 	for _, x := range v {
+		if x >= low && x <= high { // nearly always; never a NaN
+			continue
+		}
 		if !(math.Abs(x) <= math.MaxFloat64) {
 			skipped++
 			continue
@@ -34,6 +38,7 @@ func (e *Extent) Add(v []float64) {
 	if n := len(v) - skipped; n > 0 {
 		e.count, e.min, e.max = e.count+int64(n), low, high
 	}
+	return skipped
 }
 
 // Merge widens e by what o has seen.

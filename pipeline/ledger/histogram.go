@@ -3,6 +3,7 @@ package ledger
 import (
 	"encoding/json"
 	"fmt"
+	"math"
 )
 
 // A Histogram counts numbers over one [Axis], or pairs of them over two. Only
@@ -60,6 +61,10 @@ func (h *Histogram) Add(v []float64) {
 	if len(h.axes) != 1 {
 		panic("ledger: Add to a histogram over two axes")
 	}
+	if h.axes[0].Scale == "binary" {
+		h.addBinary(v)
+		return
+	}
 	for len(v) > 0 {
 		n := min(len(v), histogramBatch)
 		at := h.at[0][:n]
@@ -70,6 +75,25 @@ func (h *Histogram) Add(v []float64) {
 			}
 		}
 		v = v[n:]
+	}
+}
+
+// addBinary counts every number of v over a binary axis. The bits of positive
+// float64s are in the order of the numbers: one comparison finds those in the
+// range, and what is not among them (negative, too far, NaN) goes the long way.
+func (h *Histogram) addBinary(v []float64) {
+	a := &h.axes[0]
+	plus, shift := a.Plus, fractionBits-a.Bits
+	first, end := a.edgeOfX(a.First), a.edgeOfX(a.End)
+	base := math.Float64bits(first) >> shift
+	counts := h.counts[1 : len(h.counts)-1]
+	for _, x := range v {
+		t := x + plus
+		if k := math.Float64bits(t)>>shift - base; k < uint64(len(counts)) {
+			counts[k]++
+		} else if place := a.outside(t, first, end); place >= 0 {
+			h.counts[place]++
+		}
 	}
 }
 

@@ -103,14 +103,13 @@ func (c *Column) Add(cells *table.Column, status []int32) {
 	rows, nulls := len(status), int64(0)
 	switch cells.Kind {
 	case table.Float:
-		for i, v := range cells.Float[:rows] {
-			if v != v {
-				nulls++
-				c.Reasons.Add(status[i])
+		if c.Extent == nil || c.Extent.Add(cells.Float[:rows]) > 0 {
+			for i, v := range cells.Float[:rows] {
+				if v != v {
+					nulls++
+					c.Reasons.Add(status[i])
+				}
 			}
-		}
-		if c.Extent != nil {
-			c.Extent.Add(cells.Float[:rows])
 		}
 		if c.Sum != nil {
 			c.Sum.Add(cells.Float[:rows])

@@ -30,6 +30,7 @@ type view struct {
 	Previous     bool
 	PreviousHash string
 	Compare      []comparison
+	Shift        []fact // whether n(z) moved
 
 	In, Out, Rejects, Columns string
 	Usable, UsableShare       string
@@ -98,6 +99,7 @@ func newView(r, before *Release) *view {
 	v.units(r)
 	if before != nil && len(before.Units) > 0 {
 		v.Previous, v.PreviousHash, v.Compare = true, before.ConfigHash.String(), compare(r, before)
+		v.Shift = shiftFacts(r, before)
 	}
 	return v
 }
@@ -160,19 +162,24 @@ func compare(r, before *Release) []comparison {
 		line("rows with a redshift", have, had),
 	}
 	list = append(list, compareSpreads(r, before)...)
+	if then, now := mean(before), mean(r); then == then && now == now {
+		list = append(list, comparison{"mean redshift", fixed(then, 5), fixed(now, 5), signed(100*(now/then-1), 3) + space + "%"})
+	}
+	return list
+}
+
+// shiftFacts are the statistics of n(z), then and now.
+func shiftFacts(r, before *Release) []fact {
 	s, ok := shiftOf(before, r)
 	if !ok {
-		return list
+		return nil
 	}
-	if s.Old == s.Old && s.New == s.New {
-		list = append(list, comparison{"mean redshift", fixed(s.Old, 5), fixed(s.New, 5), signed(100*(s.New/s.Old-1), 3) + space + "%"})
+	return []fact{
+		{"largest distance D of the cumulative distributions", number(s.D, 3)},
+		{"chance of such a D if rows were only added or only removed, at random", probability(s.Nested)},
+		{"chance of such a D between independent samples", probability(s.Independent)},
+		{"rows that must have changed their bin, if rows were only added or only removed", "≥" + space + count(s.Moved)},
 	}
-	list = append(list,
-		comparison{"n(z): largest distance D of the cumulative distributions", "", number(s.D, 3), ""},
-		comparison{"chance of such a D if rows were only added or removed at random", "", probability(s.Nested), ""},
-		comparison{"chance of such a D between independent samples", "", probability(s.Independent), ""},
-		comparison{"rows that must have changed their bin of redshift", "", "≥ " + count(s.Moved), ""})
-	return list
 }
 
 // compareSpreads compares <V/Vmax> of the selections that both have.

@@ -288,7 +288,7 @@ func moreMarked(r, before *Release) check {
 			continue
 		}
 		most = grown
-		c.Finding = fmt.Sprintf("bit %d, %s: %s (%s), %s last time (%s)", 1<<i, status.Describe(i), plural(now, "row"), share(now, r.Tally.Rows), count(then), share(then, before.Tally.Rows))
+		c.Finding = fmt.Sprintf("“%s” (bit %d): %s (%s), %s last time (%s)", status.Describe(i), 1<<i, plural(now, "row"), share(now, r.Tally.Rows), count(then), share(then, before.Tally.Rows))
 	}
 	c.Level = grade(most > lookMoreMarked, most > stopMoreMarked)
 	return c
@@ -315,12 +315,12 @@ func shifted(r, before *Release) check {
 	}
 	var parts []string
 	if s.Moved > 0 {
-		parts = append(parts, fmt.Sprintf("at least %s (%s) changed redshift, or as many came as went", plural(s.Moved, "row"), share(s.Moved, s.Now)))
+		parts = append(parts, fmt.Sprintf("at least %s (%s) changed redshift, or were exchanged for others", plural(s.Moved, "row"), share(s.Moved, s.Now)))
 	}
 	if drift == drift {
 		parts = append(parts, fmt.Sprintf("the mean redshift is %s, was %s (%s %%)", fixed(s.New, 4), fixed(s.Old, 4), signed(100*drift, 2)))
 	}
-	if !same {
+	if !same && s.Nested < unlikely {
 		parts = append(parts, fmt.Sprintf("chance of such a difference if rows were only %s, at random: %s", map[bool]string{true: "added", false: "removed"}[s.Now > s.Before], probability(s.Nested)))
 	}
 	c.Finding = "n(z): " + strings.Join(parts, "; ")
