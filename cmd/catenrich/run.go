@@ -2,6 +2,7 @@ package main
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"log/slog"
 	"os"
@@ -31,6 +32,7 @@ type runFlags struct {
 
 	noReport bool
 	previous string
+	profile  profileFlags
 }
 
 func (a *app) runCommand() *cobra.Command {
@@ -59,12 +61,18 @@ under its name, or not at all.`,
 	c.Flags().StringVar(&flags.saveJob, "save-job", "", "also write the job file that the flags amount to")
 	c.Flags().BoolVar(&flags.noReport, "no-report", false, "make no report.html in the output directory")
 	c.Flags().StringVar(&flags.previous, "previous", "", "earlier release that the report compares with: a directory or a manifest")
+	flags.profile.register(c.Flags())
 	settings.register(c.Flags())
 	return c
 }
 
 // runJob is the run command.
-func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, args []string) error {
+func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, args []string) (err error) {
+	stop, err := flags.profile.start()
+	defer func() { err = errors.Join(err, stop()) }()
+	if err != nil {
+		return err
+	}
 	options, err := flags.options()
 	if err != nil {
 		return err
