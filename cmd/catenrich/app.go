@@ -38,7 +38,7 @@ func (a *app) root() *cobra.Command {
 	root := &cobra.Command{
 		Use:   "catenrich",
 		Short: "Add derived cosmological columns to survey catalogues",
-		Long: `catenrich copies a survey catalogue (CSV or Parquet) row by row, untouched, and
+		Long: `catenrich copies a survey catalogue (CSV, Parquet or FITS) row by row, untouched, and
 adds what cosmology says of each redshift: distances, times, volumes, recession
 velocities, flags, and a status that explains every empty cell.`,
 		Example: `  catenrich run nightly.toml
