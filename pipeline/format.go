@@ -17,6 +17,10 @@ type Format struct {
 	Name     string
 	Suffixes []string // with their dots, in lower case
 
+	// SelfDescribing says that a file of the format says of each column what
+	// it is: unit, UCD, description, source. Otherwise a sidecar does.
+	SelfDescribing bool
+
 	// Open opens a file, and Stream a pipe; a nil Stream means that the
 	// format cannot be read from standard input.
 	Open   func(path string, in *job.InputSettings) (table.Source, error)

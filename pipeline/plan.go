@@ -2,7 +2,6 @@ package pipeline
 
 import (
 	"crypto/sha256"
-	"encoding/json"
 	"errors"
 	"fmt"
 	"io/fs"
@@ -154,7 +153,7 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 		if err != nil {
 			return nil, fmt.Errorf("%s: %w", path, bare(err))
 		}
-		if p.sidecar(id) || !info.Mode().IsRegular() {
+		if p.sidecar(id) || describes(path) || !info.Mode().IsRegular() {
 			continue
 		}
 		units = append(units, Unit{ID: id, Input: path, Size: info.Size()})
@@ -237,7 +236,21 @@ func (p *Plan) checkPaths() error {
 			return fmt.Errorf("%s is an input, and the output of %s: set %s to another place", u.Input, other.Input, p.Job.Place("output.directory"))
 		}
 	}
-	return errors.Join(p.checkPatterns(), p.checkSameFiles(outputs))
+	return errors.Join(p.checkBeside(outputs), p.checkPatterns(), p.checkSameFiles(outputs))
+}
+
+// checkBeside refuses an output whose name another one's manifest or sidecar
+// would have.
+func (p *Plan) checkBeside(outputs map[string]*Unit) error {
+	for i := range p.Units {
+		u := &p.Units[i]
+		for _, path := range append([]string{publish.ManifestPath(u.Output), publish.PendingPath(u.Output)}, publish.Sidecars(u.Output)...) {
+			if other, ok := outputs[strings.ToLower(absolute(path))]; ok {
+				return fmt.Errorf("%s would be written to %s, which belongs to the output of %s: rename it, or put it below another directory", other.Input, other.Output, u.Input)
+			}
+		}
+	}
+	return nil
 }
 
 // checkPatterns refuses a pattern that would match the job's own outputs: the
@@ -318,27 +331,7 @@ func (p *Plan) spec() table.Spec {
 		Metadata: []table.KeyValue{
 			{Key: "catenrich.config_hash", Value: p.ConfigHash},
 			{Key: "catenrich.settings", Value: string(p.Settings)},
-			{Key: "catenrich.columns", Value: p.describe()},
+			{Key: "catenrich.columns", Value: p.describeJSON()},
 		},
 	}
-}
-
-// describe lists the added columns as JSON, for the metadata of the file.
-func (p *Plan) describe() string {
-	type column struct {
-		Name        string `json:"name"`
-		Unit        string `json:"unit"`
-		UCD         string `json:"ucd"`
-		Description string `json:"description"`
-		Source      string `json:"source"`
-	}
-	var all []column
-	for _, f := range p.Kernel.Added() {
-		all = append(all, column{f.Name, f.Unit, f.UCD, f.Description, f.Source})
-	}
-	text, err := json.Marshal(all)
-	if err != nil {
-		panic("pipeline: columns that JSON cannot hold: " + err.Error())
-	}
-	return string(text)
 }

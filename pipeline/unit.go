@@ -182,6 +182,9 @@ func (w *work) into(ctx context.Context, release *publish.Release) error {
 	if err != nil {
 		return err
 	}
+	if err := w.describe(release); err != nil {
+		return err
+	}
 	w.rejects = &rejects{create: func() (table.Output, error) { return release.Create(rejectsSuffix) }}
 	if err := w.copy(ctx, out); err != nil {
 		return err

@@ -44,7 +44,11 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (bool, error) {
 	if err != nil || out.ModTime().Before(in.ModTime()) || in.Size() != m.Input.Size {
 		return false, nil
 	}
-	for path, info := range map[string]publish.FileInfo{u.Input: m.Input.FileInfo, u.Output: m.Output.FileInfo} {
+	files := map[string]publish.FileInfo{u.Input: m.Input.FileInfo, u.Output: m.Output.FileInfo}
+	for _, s := range m.Sidecars {
+		files[u.Output+s.Suffix] = s.FileInfo
+	}
+	for path, info := range files {
 		same, err := r.sameFile(path, info)
 		if err != nil || !same {
 			return false, err

@@ -70,7 +70,7 @@ func NewFITS(src *readers.FITS, spec table.Spec) (*FITS, error) {
 		if !fitshead.Printable(f.Name) || f.Name == "" {
 			return nil, fault.Config.Errorf("the column name %q cannot stand in a FITS header, which holds ASCII text: choose another prefix or name", f.Name)
 		}
-		added = append(added, fitshead.NewColumn{Name: f.Name, Form: form, Unit: f.Unit, UCD: f.UCD, Comment: toASCII(f.Description)})
+		added = append(added, fitshead.NewColumn{Name: f.Name, Form: form, Unit: f.Unit, UCD: f.UCD, Comment: toASCII(f.Meaning())})
 	}
 	var err error
 	if w.header, err = src.Table().Extend(added, w.history()); err != nil {

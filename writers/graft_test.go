@@ -118,7 +118,7 @@ func (j *graftJob) run(out table.Output) (*Parquet, error) {
 
 // added are the new columns of most tests: one of each kind.
 var added = []table.Field{
-	{Name: "twice", Kind: table.Float, Unit: "Mpc", UCD: "pos.distance", Description: "twice the first column, null where it is"},
+	{Name: "twice", Kind: table.Float, Unit: "Mpc", UCD: "pos.distance", Description: "twice the first column, null where it is", Source: "invented & <escaped>"},
 	{Name: "noise", Kind: table.Float},
 	{Name: "new_flag", Kind: table.Flag},
 	{Name: "new_state", Kind: table.Int},

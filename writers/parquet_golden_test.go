@@ -23,12 +23,12 @@ func TestGoldenBytes(t *testing.T) {
 		spec table.Spec
 		want string
 	}{
-		{table.Spec{}, "ecd9644a44e03f6596d46ddfb211c6b2fffda8fd6f95417781a9a64a65352392"},
-		{table.Spec{Encoding: "plain"}, "51150c0d0c71b762bbd4a02e5e7f3551d62504e17efa3031440113e3fb0824ab"},
-		{table.Spec{Narrow: true}, "4c8b925604f2ceac08da5568be98799f441bdb85aa84ece6929a2b85ad75f931"},
-		{table.Spec{Codec: "snappy"}, "d87aff867753c6e41e87f291bee972a7e4b1b9203f4ab114a162f318e39590b2"},
-		{table.Spec{Codec: "none"}, "d28e82496cab85c7083671dc2441a29ad09eceb50f169403b82eb733b89d4a57"},
-		{table.Spec{Codec: "zstd", Level: 3}, "5c547bbdce2c4fd36da8428688bad039221847ee6f280b45c3e87acb0dffda94"},
+		{table.Spec{}, "88854881361a6fa792c7595792ade7ec8824afc03c50b58e01a68ae240283a8c"},
+		{table.Spec{Encoding: "plain"}, "bce8de0d8284c114ed54911c3b11c41cea154878d263de8d724ecc68a8f829db"},
+		{table.Spec{Narrow: true}, "1be2b6aaec486f30831202fcb3f58479c569a23883cdb42ee4fd810d2b3b377d"},
+		{table.Spec{Codec: "snappy"}, "8c686dc714adb5cbbe87f1dbdd01855625003dc285d49ceab60573be65925991"},
+		{table.Spec{Codec: "none"}, "707ca163cbe7822e1e5c806b5d850be1c13a562f0d1c67bf4b5256d4d42eeb2a"},
+		{table.Spec{Codec: "zstd", Level: 3}, "f6b50c7e7861bc86137b18abcce12f6659ab3a9699ad5abbf0cf647b7a81b5a8"},
 	} {
 		c.spec.Added = added
 		out := newFileOutput(t)

@@ -2,10 +2,10 @@ package writers
 
 import (
 	"encoding/json"
-	"encoding/xml"
 	"errors"
 	"fmt"
 	"regexp"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -24,7 +24,7 @@ var wholeSchemas = map[string]wholeSchema{
 	"parquet.avro.schema":                       avroSchema,
 	"avro.schema":                               avroSchema,
 	"pandas":                                    pandasSchema,
-	"IVOA.VOTable-Parquet.content":              votable,
+	votableContent:                              votable,
 	"parquet.proto.descriptor":                  notExtended,
 	"thrift.descriptor":                         notExtended,
 	"iceberg.schema":                            notExtended,
@@ -56,7 +56,7 @@ func extendEntries(foot *parquetfoot.Footer, fields []table.Field, columns []new
 			k.top++
 		}
 	}
-	run := nextRun(foot.Entries)
+	run, dropped := nextRun(foot.Entries), make(map[string]bool)
 	for _, e := range foot.Entries {
 		extend, whole := wholeSchemas[e.Key]
 		rest, ours := strings.CutPrefix(e.Key, ourPrefix)
@@ -67,12 +67,17 @@ func extendEntries(foot *parquetfoot.Footer, fields []table.Field, columns []new
 			value, err := safely(extend, e.Value, k)
 			if err != nil {
 				warnings = append(warnings, fmt.Sprintf("the metadata %q describes all columns and cannot be extended by the new ones (%v): the output is without it", e.Key, err))
+				dropped[e.Key] = true
 				continue
 			}
 			e = parquetfoot.Entry{Key: e.Key, Value: value}
 		}
 		all = append(all, e)
 	}
+	if dropped[votableContent] {
+		all = slices.DeleteFunc(all, func(e parquetfoot.Entry) bool { return e.Key == votableVersion })
+	}
+	all = append(all, newVOTable(foot, k)...)
 	for _, m := range more {
 		all = append(all, parquetfoot.Entry{Key: m.Key, Value: m.Value})
 	}
@@ -192,64 +197,4 @@ func appendToArray(doc, key string, items int, more []string) (string, error) {
 		return doc[:at] + strings.Join(more, ",") + doc[at:], nil
 	}
 	return "", fmt.Errorf("it has no %q", key)
-}
-
-// votable adds FIELDs to the first TABLE of a VOTable (VOTable 1.4; Parquet in
-// the VO, IVOA Note 1.0), where there must be one for each top-level column.
-func votable(doc string, k *newKeys) (string, error) {
-	d := xml.NewDecoder(strings.NewReader(doc))
-	depth, within, fields := 0, 0, 0 // within is the depth of the TABLE we are in
-	at, prefix := int64(-1), ""
-scan:
-	for {
-		t, err := d.RawToken()
-		if err != nil {
-			return "", fmt.Errorf("it has no complete TABLE: %w", err)
-		}
-		switch t := t.(type) {
-		case xml.StartElement:
-			depth++
-			switch {
-			case within == 0 && t.Name.Local == "TABLE":
-				within, prefix = depth, t.Name.Space
-			case within > 0 && depth == within+1 && t.Name.Local == "FIELD":
-				fields++
-			}
-		case xml.EndElement:
-			if within > 0 && depth == within+1 && t.Name.Local == "FIELD" {
-				at = d.InputOffset()
-			}
-			if depth--; within > 0 && depth < within {
-				break scan
-			}
-		}
-	}
-	if fields != k.top || at < 0 {
-		return "", fmt.Errorf("it has %d FIELDs for %d columns", fields, k.top)
-	}
-	if prefix != "" {
-		prefix += ":"
-	}
-	return doc[:at] + strings.Join(k.each(func(f *table.Field, c *newColumn) string { return fieldElement(prefix, f, c) }), "") + doc[at:], nil
-}
-
-// fieldElement renders one FIELD.
-func fieldElement(prefix string, f *table.Field, c *newColumn) string {
-	types := map[parquetfoot.Physical]string{parquetfoot.Double: "double", parquetfoot.Float: "float",
-		parquetfoot.Int32: "int", parquetfoot.Boolean: "boolean"}
-	var b strings.Builder
-	escaped := func(before, text, after string) {
-		b.WriteString(before)
-		xml.EscapeText(&b, []byte(text)) // a Builder cannot fail
-		b.WriteString(after)
-	}
-	escaped("\n<"+prefix+`FIELD name="`, f.Name, `" datatype="`+types[c.physical]+`"`)
-	if f.Unit != "" {
-		escaped(` unit="`, f.Unit, `"`)
-	}
-	if f.UCD != "" {
-		escaped(` ucd="`, f.UCD, `"`)
-	}
-	escaped("><"+prefix+"DESCRIPTION>", f.Description, "</"+prefix+"DESCRIPTION></"+prefix+"FIELD>")
-	return b.String()
 }

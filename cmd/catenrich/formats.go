@@ -32,8 +32,9 @@ func formats() pipeline.Formats {
 			},
 		},
 		{
-			Name:     "parquet",
-			Suffixes: []string{".parquet", ".pq", ".parq"},
+			Name:           "parquet",
+			SelfDescribing: true,
+			Suffixes:       []string{".parquet", ".pq", ".parq"},
 			Open: func(path string, _ *job.InputSettings) (table.Source, error) {
 				return readers.OpenParquet(path)
 			},
@@ -44,8 +45,9 @@ func formats() pipeline.Formats {
 			},
 		},
 		{
-			Name:     "fits",
-			Suffixes: []string{".fits", ".fit", ".fits.gz"},
+			Name:           "fits",
+			SelfDescribing: true,
+			Suffixes:       []string{".fits", ".fit", ".fits.gz"},
 			Open: func(path string, in *job.InputSettings) (table.Source, error) {
 				return readers.OpenFITS(path, readers.FITSOptions{HDU: in.HDU})
 			},

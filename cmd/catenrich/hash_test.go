@@ -247,7 +247,7 @@ magnitude = "mag"`},
 func outcome(t *testing.T, text string) (hash string, settings map[string]any, output []byte) {
 	t.Helper()
 	for _, old := range []string{"out.csv", "other.csv", "elsewhere/in.csv"} {
-		for _, suffix := range []string{"", ".manifest.json", ".rejects.csv"} {
+		for _, suffix := range []string{"", ".manifest.json", ".rejects.csv", ".columns.csv"} {
 			os.Remove(old + suffix)
 		}
 	}

@@ -111,8 +111,8 @@ func TestSameBytes(t *testing.T) {
 		tree := published(t, "out")
 		if want == nil {
 			want = tree
-			if len(want) != 7 {
-				t.Fatalf("2 outputs, manifests, rejects and a report are wanted, and there are\n%s", listing(t, "out"))
+			if len(want) != 9 {
+				t.Fatalf("2 outputs, manifests, sidecars of columns and rejects and a report are wanted, and there are\n%s", listing(t, "out"))
 			}
 			if plain := want["standard-input"]; len(plain) < 6<<20 {
 				t.Fatalf("%d bytes are too few for several chunks in flight", len(plain))
@@ -296,8 +296,8 @@ func TestOneUnitFails(t *testing.T) {
 			t.Errorf("exit %d, want 65\n%s", r.code, r.stderr)
 		}
 		tree := published(t, "out")
-		if len(tree) != 11 || tree["3.csv"] != nil {
-			t.Errorf("5 outputs with manifests and a report are wanted, and there are\n%s", listing(t, "out"))
+		if len(tree) != 16 || tree["3.csv"] != nil {
+			t.Errorf("5 outputs with manifests and sidecars and a report are wanted, and there are\n%s", listing(t, "out"))
 		}
 		if page := string(tree["report.html"]); !strings.Contains(page, "Do not hand over") || !strings.Contains(page, "3.csv") {
 			t.Error("the report does not say that the release lacks 3.csv")

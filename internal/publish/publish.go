@@ -106,11 +106,7 @@ func (r *Release) refuse(s State) error {
 
 // places lists every path that a release may write.
 func (r *Release) places() []string {
-	all := []string{r.target, ManifestPath(r.target), PendingPath(r.target)}
-	for _, suffix := range Suffixes {
-		all = append(all, r.target+suffix)
-	}
-	return all
+	return append([]string{r.target, ManifestPath(r.target), PendingPath(r.target)}, Sidecars(r.target)...)
 }
 
 // makeDir makes a directory and those above it, each durable before the next.

@@ -17,6 +17,15 @@ import (
 // [Put] made.
 var Suffixes = []string{".columns.csv", ".rejects.csv"}
 
+// Sidecars lists the paths of the sidecars that target can have.
+func Sidecars(target string) []string {
+	all := make([]string, len(Suffixes))
+	for i, suffix := range Suffixes {
+		all[i] = target + suffix
+	}
+	return all
+}
+
 // ManifestPath and PendingPath name an output's manifest, and the manifest of
 // an output that is just being moved into place.
 func ManifestPath(target string) string { return target + ".manifest.json" }

@@ -59,6 +59,15 @@ type Field struct {
 	Source      string // where the formula was published; added columns only
 }
 
+// Meaning is the description with its source, for a format that has one place
+// for both.
+func (f *Field) Meaning() string {
+	if f.Source == "" {
+		return f.Description
+	}
+	return f.Description + " (source: " + f.Source + ")"
+}
+
 // A Schema lists the columns of an input in file order.
 type Schema struct {
 	File   string // for messages
