@@ -49,7 +49,8 @@ type Plan struct {
 	Settings   []byte // canonical JSON; ConfigHash is its SHA-256
 	Warnings   []string
 
-	hash publish.Digest
+	hash    publish.Digest
+	partial bool // a share of the job's units
 }
 
 // Size is how many bytes of input the plan knows of.
@@ -220,6 +221,9 @@ func (p *Plan) checkPaths() error {
 		u := &p.Units[i]
 		if (u.Input == Standard || u.Output == Standard) && len(p.Units) > 1 {
 			return fmt.Errorf("standard input and output (-) go with a single unit, and there are %d", len(p.Units))
+		}
+		if strings.EqualFold(publish.ManifestPath(u.Output), p.ReleasePath()) {
+			return fmt.Errorf("%s would be written to %s, whose manifest would have the place of the release manifest: rename it", u.Input, u.Output)
 		}
 		key := strings.ToLower(absolute(u.Output))
 		if other, ok := outputs[key]; ok && u.Output != Standard {

@@ -2,6 +2,7 @@ package pipeline
 
 import (
 	"bytes"
+	"context"
 	"errors"
 	"io/fs"
 	"os"
@@ -71,45 +72,51 @@ func (r *runner) mayReport() error {
 	return publish.MayPut(r.options.FS, path, report.Ours, r.options.Replace)
 }
 
-// retractReport removes the report before the first output changes: none ever
-// stands beside outputs that it does not speak of.
-func (r *runner) retractReport() (err error) {
+// retract removes report and release manifest before the first output changes:
+// none ever stands beside outputs that it does not speak of.
+func (r *runner) retract() (err error) {
 	r.retracted.Do(func() {
 		if path := r.plan.ReportPath(); path != "" {
 			err = publish.Retract(r.options.FS, path, report.Ours)
+		}
+		if path := r.plan.ReleasePath(); path != "" {
+			err = errors.Join(err, publish.Retract(r.options.FS, path, ledger.IsRelease))
 		}
 	})
 	return err
 }
 
-// report makes the report of the run's units. Of a run in which nothing came
-// about it makes one only in the place of an earlier report.
-func (r *runner) report(outcomes []Outcome, s *Summary) error {
+// conclude makes the report and the release manifest of the run's units. Where
+// a unit failed there is only a report, which says so; of a run in which
+// nothing came about, only in the place of an earlier report. A share has not
+// seen all units, and makes neither.
+func (r *runner) conclude(ctx context.Context, outcomes []Outcome, s *Summary) error {
+	if r.plan.ReleasePath() == "" || r.plan.partial {
+		return nil
+	}
+	found, err := r.collect(ctx, func(i int, u *Unit) (*ledger.Manifest, string, error) {
+		if outcomes[i].Result == Failed {
+			return nil, "the run could not finish it", nil
+		}
+		return r.manifestOf(u)
+	})
+	if err != nil {
+		return err
+	}
+	if len(found.undone) == 0 {
+		var g Gathering
+		err := r.release(found, &g)
+		s.Report, s.Verdict = g.Report, g.Verdict
+		return err
+	}
+	if err := publish.Retract(r.options.FS, r.plan.ReleasePath(), ledger.IsRelease); err != nil {
+		return err
+	}
 	path := r.reportPath()
-	if path == "" {
+	if path == "" || len(found.undone) == len(outcomes) && !exists(r.options.FS, path) {
 		return nil
 	}
-	var b report.Builder
-	finished := false
-	for i := range outcomes {
-		o := &outcomes[i]
-		if o.Result == Failed {
-			b.Miss(o.Unit.ID, "the run could not finish it")
-			continue
-		}
-		m, err := r.manifestOf(o.Unit)
-		if err != nil {
-			return err
-		}
-		if err := b.Add(m); err != nil {
-			return err
-		}
-		finished = true
-	}
-	if _, err := r.options.FS.Lstat(path); !finished && errors.Is(err, fs.ErrNotExist) {
-		return nil
-	}
-	release, err := b.Release()
+	release, err := found.builder.Release()
 	if err != nil {
 		return err
 	}
@@ -117,13 +124,27 @@ func (r *runner) report(outcomes []Outcome, s *Summary) error {
 	return PutReport(r.options.FS, path, release, r.options.Previous, r.options.Replace)
 }
 
-// manifestOf reads the manifest of a finished unit.
-func (r *runner) manifestOf(u *Unit) (*ledger.Manifest, error) {
-	state, err := publish.Look(r.options.FS, u.Output)
+// manifestOf reads the manifest of a unit that this run has just finished or
+// found standing. Another run may have put its own there since.
+func (r *runner) manifestOf(u *Unit) (*ledger.Manifest, string, error) {
+	text, err := publish.ReadManifest(r.options.FS, u.Output)
 	if err != nil {
-		return nil, err
+		return nil, "", err
 	}
-	return ledger.Parse(state.Manifest)
+	m, err := ledger.Parse(text)
+	switch {
+	case err != nil:
+		return nil, "", err
+	case m.ConfigHash != r.plan.hash || m.Unit != u.ID:
+		return nil, "was replaced by another run", nil
+	}
+	return m, "", nil
+}
+
+// exists reports whether something has the name.
+func exists(fsys publish.FS, path string) bool {
+	_, err := fsys.Lstat(path)
+	return !errors.Is(err, fs.ErrNotExist)
 }
 
 // ReportOf is where the report of a directory of outputs, of an output or of a

@@ -54,7 +54,7 @@ const (
 func Run(ctx context.Context, p *Plan, o Options, watch Observer) (*Summary, error) {
 	start := time.Now()
 	r := newRunner(p, o, watch)
-	if err := r.mayReport(); err != nil {
+	if err := r.mayRelease(); err != nil {
 		return nil, err
 	}
 	defer r.limitMemory()()
@@ -77,7 +77,7 @@ func Run(ctx context.Context, p *Plan, o Options, watch Observer) (*Summary, err
 		return nil, err
 	}
 	summary, err := summarize(outcomes, time.Since(start))
-	return summary, errors.Join(err, r.report(outcomes, summary))
+	return summary, errors.Join(err, r.conclude(ctx, outcomes, summary))
 }
 
 // summarize adds up the outcomes, and joins the errors in unit order.

@@ -67,7 +67,12 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 	if err := work.into(ctx, release); err != nil {
 		return err
 	}
-	if err := r.retractReport(); err != nil {
+	if lock != nil && lock.Warning != nil { // another run may have done the same meanwhile
+		if done, err := r.upToDate(u, o); done || err != nil {
+			return err
+		}
+	}
+	if err := r.retract(); err != nil {
 		return err
 	}
 	return release.Commit(work.manifest)
@@ -107,16 +112,21 @@ func (r *runner) open(u *Unit) (table.Source, error) {
 // to do: a pending publication was completed, or another run did the work while
 // this one waited for its lock.
 func (r *runner) finished(u *Unit, o *Outcome) (bool, error) {
-	dir := filepath.Dir(u.Output)
-	if _, swept := r.swept.LoadOrStore(dir, true); !swept {
-		if err := publish.Sweep(r.options.FS, dir); err != nil {
-			return false, err
-		}
+	if err := r.sweep(filepath.Dir(u.Output)); err != nil {
+		return false, err
 	}
 	if _, err := publish.Recover(r.options.FS, u.Output); err != nil {
 		return false, err
 	}
 	return r.upToDate(u, o)
+}
+
+// sweep removes, once a run, what crashed runs left in a directory.
+func (r *runner) sweep(dir string) error {
+	if _, swept := r.swept.LoadOrStore(dir, true); swept {
+		return nil
+	}
+	return publish.Sweep(r.options.FS, dir)
 }
 
 // lock takes the lock of the unit's output: in the directory that all outputs

@@ -1,10 +1,12 @@
 package pipeline
 
 import (
+	"fmt"
 	"os"
 
 	"catenrich/internal/fault"
 	"catenrich/internal/publish"
+	"catenrich/pipeline/job"
 	"catenrich/pipeline/ledger"
 )
 
@@ -14,16 +16,8 @@ func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
 	if u.Input == Standard {
 		return false, nil
 	}
-	state, err := publish.Look(r.options.FS, u.Output)
-	if err != nil || !state.Whole {
-		return false, err
-	}
-	m, err := ledger.Parse(state.Manifest)
-	if err != nil || m.ConfigHash != r.plan.hash || m.Unit != u.ID {
-		return false, nil
-	}
-	same, err := r.sameFiles(u, m)
-	if err != nil || !same {
+	m, why, _, err := r.standing(u)
+	if err != nil || why != "" {
 		return false, err
 	}
 	o.Result, o.Size = UpToDate, m.Output.Size
@@ -32,29 +26,92 @@ func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
 	return true, nil
 }
 
-// sameFiles compares input and output with what the manifest says of them: by
-// size and quick fingerprint, or all of their bytes; and the output must not
-// be older than the input.
-func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (bool, error) {
+// standing gives the manifest of a unit whose output stands, made by the same
+// job of the same input; else it says why that is not so. pending means that a
+// publication was begun and is not finished.
+func (r *runner) standing(u *Unit) (m *ledger.Manifest, why string, pending bool, err error) {
+	state, err := publish.Look(r.options.FS, u.Output)
+	if err != nil {
+		return nil, "", false, err
+	}
+	if why = r.standingManifest(u, &state, &m); why == "" {
+		why, err = r.sameFiles(u, m)
+	}
+	return m, why, state.Pending, err
+}
+
+// standingManifest says what is wrong with what stands at a unit's output, as
+// far as its manifest tells.
+func (r *runner) standingManifest(u *Unit, s *publish.State, m **ledger.Manifest) string {
+	if s.Manifest == nil {
+		switch {
+		case s.Pending:
+			return "its publication was interrupted"
+		case s.Exists:
+			return "has no manifest, and may not be ours (run would want --replace)"
+		}
+		return "is missing"
+	}
+	parsed, err := ledger.Parse(s.Manifest)
+	switch {
+	case err != nil:
+		return "its manifest is damaged or not ours"
+	case parsed.ConfigHash != r.plan.hash:
+		return fmt.Sprintf("was made by another job, of config hash %.12s…", parsed.ConfigHash.String())
+	case parsed.OutputVersion != job.OutputVersion:
+		return fmt.Sprintf("was made by another version of the outputs, %d", parsed.OutputVersion)
+	case parsed.Unit != u.ID:
+		return fmt.Sprintf("was made of another unit, %s", parsed.Unit)
+	case s.Pending:
+		return "its publication was interrupted"
+	case !s.Exists:
+		return "is missing, though its manifest is there"
+	case !s.Whole:
+		return "is not what its manifest describes, or a sidecar is not"
+	}
+	*m = parsed
+	return ""
+}
+
+// sameFiles compares input, output and sidecars with what the manifest says of
+// them: by size and quick fingerprint, or all of their bytes; and the output
+// must not be older than the input. It says what differs.
+func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) {
 	in, err := os.Stat(u.Input)
 	if err != nil {
-		return false, fault.NoInput.Wrap(err)
+		return "", fault.NoInput.Wrap(err)
 	}
 	out, err := os.Stat(u.Output)
-	if err != nil || out.ModTime().Before(in.ModTime()) || in.Size() != m.Input.Size {
-		return false, nil
+	switch {
+	case err != nil:
+		return "is missing", nil
+	case in.Size() != m.Input.Size:
+		return "its input has changed", nil
+	case out.ModTime().Before(in.ModTime()):
+		return "is older than its input", nil
 	}
-	files := map[string]publish.FileInfo{u.Input: m.Input.FileInfo, u.Output: m.Output.FileInfo}
-	for _, s := range m.Sidecars {
-		files[u.Output+s.Suffix] = s.FileInfo
+	type pair struct {
+		path string
+		info publish.FileInfo
+		why  string
 	}
-	for path, info := range files {
-		same, err := r.sameFile(path, info)
-		if err != nil || !same {
-			return false, err
+	files := []pair{{u.Input, m.Input.FileInfo, "its input has changed"}}
+	if r.options.FullCheck { // of these a quick look was had already
+		files = append(files, pair{u.Output, m.Output.FileInfo, "is not what its manifest describes"})
+		for _, s := range m.Sidecars {
+			files = append(files, pair{u.Output + s.Suffix, s.FileInfo, "has a sidecar that its manifest does not describe"})
 		}
 	}
-	return true, nil
+	for _, f := range files {
+		same, err := r.sameFile(f.path, f.info)
+		if err != nil {
+			return "", err
+		}
+		if !same {
+			return f.why, nil
+		}
+	}
+	return "", nil
 }
 
 func (r *runner) sameFile(path string, info publish.FileInfo) (bool, error) {

@@ -54,7 +54,7 @@ velocities, flags, and a status that explains every empty cell.`,
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
 		return fault.Usage.Errorf("%w (`%s --help` lists the flags)", err, c.CommandPath())
 	})
-	root.AddCommand(a.runCommand(), a.planCommand(), a.columnsCommand(), a.verifyCommand(), a.explainCommand(), a.reportCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.runCommand(), a.planCommand(), a.gatherCommand(), a.columnsCommand(), a.verifyCommand(), a.explainCommand(), a.reportCommand(), a.demoCommand(), a.versionCommand())
 	return root
 }
 

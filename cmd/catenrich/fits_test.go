@@ -50,8 +50,8 @@ func TestFITSSameBytes(t *testing.T) {
 		tree := published(t, "out")
 		if want == nil {
 			want = tree
-			if len(want) != 5 {
-				t.Fatalf("2 outputs, manifests and a report are wanted, and there are\n%s", listing(t, "out"))
+			if len(want) != 6 {
+				t.Fatalf("2 outputs, manifests, a release manifest and a report are wanted, and there are\n%s", listing(t, "out"))
 			}
 			// The codec is a setting: the config hash in the header differs, and with
 			// it the checksums.

@@ -2,6 +2,7 @@ package main
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -16,13 +17,18 @@ import (
 
 func (a *app) planCommand() *cobra.Command {
 	var asJSON bool
+	var shares int
 	var settings jobFlags
 	c := &cobra.Command{
 		Use:   "plan [JOB.toml | FILES…]",
 		Short: "Show what run would do, and write nothing",
 		Example: `  catenrich plan nightly.toml
+  catenrich plan nightly.toml --shares 8
   catenrich plan nightly.toml --json | jq -r .config_hash`,
 		RunE: func(_ *cobra.Command, args []string) error {
+			if err := checkShares(shares); err != nil {
+				return err
+			}
 			resolved, _, err := settings.resolve(args)
 			if err != nil {
 				return err
@@ -35,12 +41,15 @@ func (a *app) planCommand() *cobra.Command {
 				return err
 			}
 			if asJSON {
-				return printJSON(a.stdout, planJSON(plan))
+				view := planJSON(plan)
+				view.Shares = shareViews(plan, shares)
+				return printJSON(a.stdout, view)
 			}
-			return planText(a.stdout, plan)
+			return errors.Join(planText(a.stdout, plan), sharesText(a.stdout, plan, shares))
 		},
 	}
 	c.Flags().BoolVar(&asJSON, "json", false, "print JSON")
+	c.Flags().IntVar(&shares, "shares", 0, "also show how the units would be dealt to so many shares (run --share I/N)")
 	settings.register(c.Flags())
 	return c
 }
@@ -55,6 +64,7 @@ type planView struct {
 	Terms      []string        `json:"terms"`
 	Warnings   []string        `json:"warnings"`
 	Settings   json.RawMessage `json:"settings"`
+	Shares     []shareView     `json:"shares,omitempty"`
 }
 
 type unitView struct {

@@ -111,8 +111,8 @@ func TestSameBytes(t *testing.T) {
 		tree := published(t, "out")
 		if want == nil {
 			want = tree
-			if len(want) != 9 {
-				t.Fatalf("2 outputs, manifests, sidecars of columns and rejects and a report are wanted, and there are\n%s", listing(t, "out"))
+			if len(want) != 10 {
+				t.Fatalf("2 outputs, manifests, sidecars of columns and rejects, a release manifest and a report are wanted, and there are\n%s", listing(t, "out"))
 			}
 			if plain := want["standard-input"]; len(plain) < 6<<20 {
 				t.Fatalf("%d bytes are too few for several chunks in flight", len(plain))

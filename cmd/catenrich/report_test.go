@@ -120,7 +120,7 @@ func TestReportFiles(t *testing.T) {
 		t.Error("the report of a manifest differs")
 	}
 
-	if r := mustRun(t, append(args, "-o", "single.csv")...); len(readTree(t, ".")) != 12 {
+	if r := mustRun(t, append(args, "-o", "single.csv")...); len(readTree(t, ".")) != 13 {
 		t.Errorf("one named output comes without a report, and there are\n%s%s", listing(t, "."), r.stderr)
 	}
 	mustRun(t, append(args, "-o", "none/", "--no-report")...)

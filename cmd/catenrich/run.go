@@ -32,6 +32,7 @@ type runFlags struct {
 
 	noReport bool
 	previous string
+	share    string
 	profile  profileFlags
 }
 
@@ -47,6 +48,7 @@ under its name, or not at all.`,
 		Example: `  catenrich run nightly.toml
   catenrich run survey.csv --redshift z --add distances -o enriched.csv
   catenrich run *.csv.gz --velocity cz --velocity-convention optical --add all -o out/
+  catenrich run nightly.toml --share 3/8
   zcat survey.csv.gz | catenrich run - --redshift z --add luminosity_distance -o -`,
 		RunE: func(c *cobra.Command, args []string) error {
 			return a.runJob(c.Context(), &flags, &settings, args)
@@ -61,6 +63,7 @@ under its name, or not at all.`,
 	c.Flags().StringVar(&flags.saveJob, "save-job", "", "also write the job file that the flags amount to")
 	c.Flags().BoolVar(&flags.noReport, "no-report", false, "make no report.html in the output directory")
 	c.Flags().StringVar(&flags.previous, "previous", "", "earlier release that the report compares with: a directory or a manifest")
+	c.Flags().StringVar(&flags.share, "share", "", "do share I of N (I/N) of the units; `catenrich gather` ends the release when all are done")
 	flags.profile.register(c.Flags())
 	settings.register(c.Flags())
 	return c
@@ -77,6 +80,10 @@ func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, a
 	if err != nil {
 		return err
 	}
+	share, shares, err := parseShare(flags.share)
+	if err != nil {
+		return err
+	}
 	resolved, file, err := settings.resolve(args)
 	if err != nil {
 		return err
@@ -89,6 +96,9 @@ func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, a
 	plan, err := pipeline.NewPlan(resolved, formats())
 	if err != nil {
 		return err
+	}
+	if shares > 0 {
+		plan = plan.Share(share, shares)
 	}
 	return a.execute(ctx, plan, options, flags.quiet)
 }

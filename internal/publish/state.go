@@ -319,6 +319,16 @@ func retreat(fsys FS, target string, s *State) error {
 	return fsys.SyncDir(dir)
 }
 
+// ReadManifest is the text of the manifest that stands beside target, whether
+// or not it describes it; nil if there is none.
+func ReadManifest(fsys FS, target string) ([]byte, error) {
+	text, err := readSmall(fsys, ManifestPath(target))
+	if err != nil {
+		return nil, fault.IO.Wrap(fmt.Errorf("reading the manifest of %s: %w", target, plain(err)))
+	}
+	return text, nil
+}
+
 // readSmall reads a manifest; nil if there is none, or no plain file.
 func readSmall(fsys FS, path string) ([]byte, error) {
 	info, err := fsys.Lstat(path)

@@ -16,8 +16,20 @@ import (
 type Histogram struct {
 	axes   []Axis
 	counts []int64 // the last axis runs fastest; each has a place below and one above
-	edges  [2][]float64
-	at     [2][]int32
+
+	// A histogram that was read has only its cells, by their places,
+	// until one counts with it: a release may have a hundred thousand, each
+	// nearly empty.
+	sparse []place
+
+	edges [2][]float64 // for Add alone
+	at    [2][]int32
+}
+
+// A place is one of the counts.
+type place struct {
+	at    int
+	count int64
 }
 
 // histogramBatch is how many numbers are placed before they are counted.
@@ -34,23 +46,56 @@ func NewHistogram(axes ...Axis) *Histogram {
 }
 
 func newHistogram(axes []Axis) (*Histogram, error) {
-	if len(axes) < 1 || len(axes) > 2 {
-		return nil, fmt.Errorf("a histogram over %d axes", len(axes))
+	if err := validAxes(axes); err != nil {
+		return nil, err
 	}
 	h := &Histogram{axes: axes}
+	h.unfold()
+	return h, nil
+}
+
+// validAxes refuses what no histogram has.
+func validAxes(axes []Axis) error {
+	if len(axes) < 1 || len(axes) > 2 {
+		return fmt.Errorf("a histogram over %d axes", len(axes))
+	}
 	size := int64(1)
 	for i := range axes {
 		if err := axes[i].validate(); err != nil {
-			return nil, err
+			return err
 		}
 		if size *= axes[i].bins() + 2; size > maxBins {
-			return nil, fmt.Errorf("a histogram of more than %d cells", maxBins)
+			return fmt.Errorf("a histogram of more than %d cells", maxBins)
 		}
-		h.edges[i] = axes[i].edges()
-		h.at[i] = make([]int32, histogramBatch)
+	}
+	return nil
+}
+
+// unfold makes the counts of a histogram that has only cells.
+func (h *Histogram) unfold() {
+	if h.counts != nil {
+		return
+	}
+	size := int64(1)
+	for i := range h.axes {
+		size *= h.axes[i].bins() + 2
 	}
 	h.counts = make([]int64, size)
-	return h, nil
+	for _, p := range h.sparse {
+		h.counts[p.at] += p.count
+	}
+	h.sparse = nil
+}
+
+// ready makes what placing numbers needs.
+func (h *Histogram) ready() {
+	h.unfold()
+	for i := range h.axes {
+		if h.at[i] == nil {
+			h.edges[i] = h.axes[i].edges()
+			h.at[i] = make([]int32, histogramBatch)
+		}
+	}
 }
 
 // Axes returns what the histogram counts over.
@@ -62,9 +107,11 @@ func (h *Histogram) Add(v []float64) {
 		panic("ledger: Add to a histogram over two axes")
 	}
 	if h.axes[0].Scale == "binary" {
+		h.unfold()
 		h.addBinary(v)
 		return
 	}
+	h.ready()
 	for len(v) > 0 {
 		n := min(len(v), histogramBatch)
 		at := h.at[0][:n]
@@ -102,6 +149,7 @@ func (h *Histogram) AddPairs(x, y []float64) {
 	if len(h.axes) != 2 || len(x) != len(y) {
 		panic("ledger: AddPairs of slices of unequal length, or over one axis")
 	}
+	h.ready()
 	stride := int32(h.axes[1].bins() + 2)
 	for len(x) > 0 {
 		n := min(len(x), histogramBatch)
@@ -127,8 +175,12 @@ func (h *Histogram) Merge(o *Histogram) error {
 			return fmt.Errorf("histograms over different axes cannot be added: %+v and %+v", h.axes[i], o.axes[i])
 		}
 	}
+	h.unfold()
 	for i, n := range o.counts {
 		h.counts[i] += n
+	}
+	for _, p := range o.sparse {
+		h.counts[p.at] += p.count
 	}
 	return nil
 }
@@ -142,6 +194,7 @@ type Cell struct {
 // Cells calls yield for every cell with something in it, in ascending order
 // of keys. It can be ranged over.
 func (h *Histogram) Cells(yield func(Cell) bool) {
+	h.unfold()
 	stride := 1
 	if len(h.axes) == 2 {
 		stride = int(h.axes[1].bins() + 2)
@@ -182,10 +235,10 @@ func (h *Histogram) UnmarshalJSON(text []byte) error {
 	if err := json.Unmarshal(text, &j); err != nil {
 		return err
 	}
-	fresh, err := newHistogram(j.Axes)
-	if err != nil {
+	if err := validAxes(j.Axes); err != nil {
 		return err
 	}
+	fresh := &Histogram{axes: j.Axes}
 	for _, c := range j.Cells {
 		if len(c) != len(j.Axes)+1 || c[len(c)-1] <= 0 {
 			return fmt.Errorf("a histogram cell %v over %d axes", c, len(j.Axes))
@@ -199,7 +252,7 @@ func (h *Histogram) UnmarshalJSON(text []byte) error {
 			}
 			at = at*(a.bins()+2) + place
 		}
-		fresh.counts[at] += c[len(c)-1]
+		fresh.sparse = append(fresh.sparse, place{int(at), c[len(c)-1]})
 	}
 	*h = *fresh
 	return nil

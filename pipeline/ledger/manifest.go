@@ -9,9 +9,9 @@
 package ledger
 
 import (
-	"bytes"
 	"crypto/sha256"
 	"encoding/json"
+	"errors"
 	"fmt"
 
 	"github.com/gowebpki/jcs"
@@ -41,6 +41,9 @@ type Manifest struct {
 
 	Sidecars []publish.Sidecar `json:"sidecars"` // in order of their suffixes
 	Tally    Tally             `json:"tally"`
+
+	// Self is the digest "self", set by [Parse].
+	Self publish.Digest `json:"-"`
 }
 
 // A File is an input or an output. The rows of an input include its rejects.
@@ -68,6 +71,11 @@ func (m *Manifest) Check() error {
 	if m.Input.Rows != m.Output.Rows+t.Rejects || m.Output.Rows != t.Rows {
 		return fmt.Errorf("%d rows went in, %d came out, %d were rejected, %d were counted", m.Input.Rows, m.Output.Rows, t.Rejects, t.Rows)
 	}
+	return t.balanced()
+}
+
+// balanced proves that each row was counted once in every column.
+func (t *Tally) balanced() error {
 	for _, c := range t.Columns {
 		if c.Values+c.Nulls != t.Rows {
 			return fmt.Errorf("column %q has %d values and %d nulls in %d rows", c.Name, c.Values, c.Nulls, t.Rows)
@@ -105,12 +113,15 @@ func canonical(v any) ([]byte, error) {
 	return jcs.Transform(plain)
 }
 
-// Parse reads a manifest and proves it whole: that it is canonical to the
-// byte, that it has the digest that "self" says, and that its rows add up. A
-// fault is of class [fault.Data]. Members that this version does not know are
-// covered by the digest and otherwise ignored.
+// Parse reads a manifest and proves it whole: that its bytes have the digest
+// that "self" says, and that its rows add up. A fault is of class [fault.Data].
+// Members that this version does not know are covered by the digest and
+// otherwise ignored.
 func Parse(text []byte) (*Manifest, error) {
 	m, err := parse(text)
+	if err != nil && IsRelease(text) {
+		err = errors.New("it describes a whole release, not one output")
+	}
 	if err != nil {
 		return nil, fault.Data.Wrap(fmt.Errorf("the manifest is damaged or not ours: %w", err))
 	}
@@ -118,18 +129,11 @@ func Parse(text []byte) (*Manifest, error) {
 }
 
 func parse(text []byte) (*Manifest, error) {
-	line, ended := bytes.CutSuffix(text, []byte("\n"))
-	again, err := jcs.Transform(line)
+	self, line, err := checkSelf(text)
 	if err != nil {
 		return nil, err
 	}
-	if !ended || !bytes.Equal(again, line) {
-		return nil, fmt.Errorf("it is not canonical JSON (RFC 8785) on one line")
-	}
-	if err := checkSelf(line); err != nil {
-		return nil, err
-	}
-	m := new(Manifest)
+	m := &Manifest{Self: self}
 	if err := json.Unmarshal(line, m); err != nil {
 		return nil, err
 	}
@@ -140,27 +144,6 @@ func parse(text []byte) (*Manifest, error) {
 		return nil, fmt.Errorf("the settings have the hash %v, not %v as it says", got, m.ConfigHash)
 	}
 	return m, m.Check()
-}
-
-// checkSelf recomputes the digest of a canonical manifest without its "self".
-func checkSelf(line []byte) error {
-	var members map[string]json.RawMessage
-	if err := json.Unmarshal(line, &members); err != nil {
-		return err
-	}
-	var want publish.Digest
-	if err := json.Unmarshal(members["self"], &want); err != nil {
-		return fmt.Errorf(`no digest "self" in it: %w`, err)
-	}
-	delete(members, "self")
-	rest, err := canonical(members)
-	if err != nil {
-		return err
-	}
-	if got := publish.Digest(sha256.Sum256(rest)); got != want {
-		return fmt.Errorf(`it has the digest %v, not %v as "self" says`, got, want)
-	}
-	return nil
 }
 
 // Set copies what publication found out about the files.

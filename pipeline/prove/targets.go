@@ -10,6 +10,7 @@ import (
 
 	"catenrich/internal/fault"
 	"catenrich/internal/publish"
+	"catenrich/pipeline/ledger"
 )
 
 // Targets lists the outputs that paths mean, each once: a file stands for
@@ -58,6 +59,16 @@ func outputOf(path string) string {
 	return path
 }
 
+// isRelease reports whether a path is the manifest of a whole release, which
+// describes no output.
+func isRelease(path string) bool {
+	if filepath.Base(path) != ledger.ReleaseName {
+		return false
+	}
+	text, err := os.ReadFile(path)
+	return err == nil && ledger.IsRelease(text)
+}
+
 // outputsIn lists the outputs in and below a directory, in order.
 func outputsIn(dir string) ([]string, error) {
 	var found []string
@@ -71,7 +82,7 @@ func outputsIn(dir string) ([]string, error) {
 		if d.IsDir() && d.Name() == publish.LockDir {
 			return filepath.SkipDir
 		}
-		if output := outputOf(path); output != path && !d.IsDir() {
+		if output := outputOf(path); output != path && !d.IsDir() && !isRelease(path) {
 			found = append(found, output)
 		}
 		return nil

@@ -70,6 +70,9 @@ func walk(dir string, b *Builder) error {
 		if !ok {
 			return nil
 		}
+		if e.Name() == ledger.ReleaseName && isRelease(path) {
+			return nil
+		}
 		m, err := read(path)
 		switch {
 		case fault.Of(err) == fault.Data:
@@ -81,6 +84,13 @@ func walk(dir string, b *Builder) error {
 		return b.Add(m)
 	})
 	return fault.NoInput.Wrap(err)
+}
+
+// isRelease reports whether the file is the manifest of a whole release, which
+// describes no output.
+func isRelease(path string) bool {
+	text, err := os.ReadFile(path)
+	return err == nil && ledger.IsRelease(text)
 }
 
 // read reads one manifest.

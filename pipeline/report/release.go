@@ -80,6 +80,33 @@ func (b *Builder) Add(m *ledger.Manifest) error {
 	return nil
 }
 
+// Merge adds what another builder added up, which is not to be used after it.
+func (b *Builder) Merge(o *Builder) error {
+	for hash, from := range o.groups {
+		r := b.groups[hash]
+		switch {
+		case r == nil && len(b.groups) == maxGroups:
+			for i := range from.Units {
+				b.Miss(from.Units[i].ID, otherJob(hash))
+			}
+			continue
+		case r == nil:
+			if b.groups == nil {
+				b.groups = make(map[publish.Digest]*Release)
+			}
+			b.groups[hash] = from
+			continue
+		}
+		if err := r.Tally.Merge(&from.Tally); err != nil {
+			return fault.Data.Wrap(fmt.Errorf("adding up %s: %w", from.Units[0].ID, err))
+		}
+		r.Input += from.Input
+		r.Units = append(r.Units, from.Units...)
+	}
+	b.missing = append(b.missing, o.missing...)
+	return nil
+}
+
 // Miss notes a unit that should have a manifest and has no usable one.
 func (b *Builder) Miss(unit, why string) { b.missing = append(b.missing, Missing{unit, why}) }
 
