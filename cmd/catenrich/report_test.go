@@ -83,6 +83,9 @@ func breakRedshifts(t *testing.T, catalogue string) string {
 
 // TestBrokenNight: the page says what happened, in its first lines.
 func TestBrokenNight(t *testing.T) {
+	if testing.Short() {
+		t.Skip("enriches the demo four times")
+	}
 	t.Chdir(t.TempDir())
 	mustRun(t, "demo", "qr", "--quiet")
 	brokenNight(t)
