@@ -42,7 +42,7 @@ func (f fullFS) Create(path string) (File, error) {
 		return nil, err
 	}
 	full, err := os.OpenFile("/dev/full", os.O_RDWR, 0)
-	return osFile{full}, errors.Join(err, named.Close())
+	return osFile{full, nil}, errors.Join(err, named.Close())
 }
 
 func TestFullDisk(t *testing.T) {

@@ -45,7 +45,7 @@ func (osFS) Create(path string) (File, error) {
 	if err != nil {
 		return nil, err
 	}
-	return osFile{f}, nil
+	return osFile{f, &writeBack{file: f}}, nil
 }
 
 func (osFS) Open(path string) (File, error) {
@@ -53,7 +53,7 @@ func (osFS) Open(path string) (File, error) {
 	if err != nil {
 		return nil, err
 	}
-	return osFile{f}, nil
+	return osFile{f, nil}, nil
 }
 
 func (osFS) Rename(from, to string) error           { return os.Rename(from, to) }
@@ -95,15 +95,29 @@ func (osFS) Scratch(dir string) (*os.File, error) {
 	return f, nil
 }
 
-type osFile struct{ *os.File }
+type osFile struct {
+	*os.File
+	back *writeBack // nil for a file that is only read
+}
+
+func (f osFile) Write(p []byte) (int, error) {
+	n, err := f.File.Write(p)
+	f.back.wrote(int64(n))
+	return n, err
+}
+
+func (f osFile) Close() error {
+	f.back.stop()
+	return f.File.Close()
+}
 
 func (f osFile) CopyRange(src *os.File, off, n int64) (int64, error) {
-	done, err := copyInKernel(f.File, src, off, n)
+	done, err := copyInKernel(f.File, src, off, n, f.back.wrote)
 	if err != nil || done == n {
 		return done, err
 	}
 	// Not this kernel, or not between these filesystems.
-	rest, err := io.CopyBuffer(onlyWriter{f.File}, onlyReader{io.NewSectionReader(src, off+done, n-done)}, make([]byte, blockSize))
+	rest, err := io.CopyBuffer(onlyWriter{f}, onlyReader{io.NewSectionReader(src, off+done, n-done)}, make([]byte, blockSize))
 	done += rest
 	if err == nil && done < n {
 		err = io.ErrUnexpectedEOF

@@ -12,21 +12,25 @@ import (
 	"golang.org/x/sys/unix"
 )
 
+// copyStep is how much is copied between two reports of progress.
+const copyStep = 64 << 20
+
 // copyInKernel appends as many as it can of n bytes of src from off to dst
-// without bringing them into this process. Fewer than n with a nil error means
+// without bringing them into this process, and tells progress of them as they
+// come, unless they are shared and have no need to be written. Fewer than n with a nil error means
 // that the kernel declines, and the caller copies the rest itself.
 //
 // A whole file at the start of an empty one is shared where the filesystem can
 // (FICLONE: btrfs, XFS); copy_file_range shares what block boundaries allow,
 // and elsewhere copies from page to page.
-func copyInKernel(dst, src *os.File, off, n int64) (int64, error) {
+func copyInKernel(dst, src *os.File, off, n int64, progress func(int64)) (int64, error) {
 	if off == 0 && clone(dst, src, n) {
 		return n, nil
 	}
 	var done int64
 	for done < n {
 		from := off + done
-		step := int(min(n-done, 1<<30))
+		step := int(min(n-done, copyStep))
 		m, err := unix.CopyFileRange(int(src.Fd()), &from, int(dst.Fd()), nil, step, 0)
 		switch {
 		case errors.Is(err, unix.EINTR):
@@ -37,8 +41,19 @@ func copyInKernel(dst, src *os.File, off, n int64) (int64, error) {
 			return done, &os.PathError{Op: "copy_file_range", Path: dst.Name(), Err: err}
 		}
 		done += int64(m)
+		progress(int64(m))
 	}
 	return done, nil
+}
+
+// beginWriting starts the writing of a part of f to the disk. It is asked
+// without waiting for the end, so an error of the disk is left for the sync.
+func beginWriting(f *os.File, off, n int64) {
+	raw, err := f.SyscallConn()
+	if err != nil {
+		return
+	}
+	raw.Control(func(fd uintptr) { unix.SyncFileRange(int(fd), off, n, unix.SYNC_FILE_RANGE_WRITE) })
 }
 
 // clone makes the empty file dst share all n bytes of src, and leaves dst's
