@@ -74,16 +74,16 @@ func (r *runner) mayReport() error {
 
 // retract removes report and release manifest before the first output changes:
 // none ever stands beside outputs that it does not speak of.
-func (r *runner) retract() (err error) {
-	r.retracted.Do(func() {
+func (r *runner) retract() error {
+	r.retracting.Do(func() {
 		if path := r.plan.ReportPath(); path != "" {
-			err = publish.Retract(r.options.FS, path, report.Ours)
+			r.retracted = publish.Retract(r.options.FS, path, report.Ours)
 		}
 		if path := r.plan.ReleasePath(); path != "" {
-			err = errors.Join(err, publish.Retract(r.options.FS, path, ledger.IsRelease))
+			r.retracted = errors.Join(r.retracted, publish.Retract(r.options.FS, path, ledger.IsRelease))
 		}
 	})
-	return err
+	return r.retracted
 }
 
 // conclude makes the report and the release manifest of the run's units. Where

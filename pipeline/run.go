@@ -107,7 +107,8 @@ type runner struct {
 	warned  sync.Once // of a filesystem without locks
 	swept   sync.Map  // directories whose abandoned temporaries were removed
 
-	retracted sync.Once // of the report of an earlier run
+	retracting sync.Once // of the report of an earlier run
+	retracted  error     // what came of it
 }
 
 func newRunner(p *Plan, o Options, watch Observer) *runner {

@@ -219,7 +219,13 @@ func (w *work) manifest(files publish.Record) ([]byte, error) {
 	m.Input.FileInfo = publish.FileInfo{Size: size, SHA256: sum}
 	if w.unit.Input != Standard {
 		var err error
-		if m.Input.Quick, err = quick(w.unit.Input, size); err != nil {
+		m.Input.Quick, err = quick(w.unit.Input, size)
+		// The digest of what was copied is made behind the copying, and the
+		// fingerprint just now: both must be of what was read.
+		if changed := w.src.Check(); changed != nil {
+			return nil, changed
+		}
+		if err != nil {
 			return nil, err
 		}
 	}

@@ -81,7 +81,7 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) 
 	if err != nil {
 		return "", fault.NoInput.Wrap(err)
 	}
-	out, err := os.Stat(u.Output)
+	out, err := r.options.FS.Lstat(u.Output)
 	switch {
 	case err != nil:
 		return "is missing", nil
@@ -91,19 +91,20 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) 
 		return "is older than its input", nil
 	}
 	type pair struct {
+		fsys publish.FS
 		path string
 		info publish.FileInfo
 		why  string
 	}
-	files := []pair{{u.Input, m.Input.FileInfo, "its input has changed"}}
+	files := []pair{{publish.OS, u.Input, m.Input.FileInfo, "its input has changed"}}
 	if r.options.FullCheck { // of these a quick look was had already
-		files = append(files, pair{u.Output, m.Output.FileInfo, "is not what its manifest describes"})
+		files = append(files, pair{r.options.FS, u.Output, m.Output.FileInfo, "is not what its manifest describes"})
 		for _, s := range m.Sidecars {
-			files = append(files, pair{u.Output + s.Suffix, s.FileInfo, "has a sidecar that its manifest does not describe"})
+			files = append(files, pair{r.options.FS, u.Output + s.Suffix, s.FileInfo, "has a sidecar that its manifest does not describe"})
 		}
 	}
 	for _, f := range files {
-		same, err := r.sameFile(f.path, f.info)
+		same, err := r.sameFile(f.fsys, f.path, f.info)
 		if err != nil {
 			return "", err
 		}
@@ -114,16 +115,16 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) 
 	return "", nil
 }
 
-func (r *runner) sameFile(path string, info publish.FileInfo) (bool, error) {
-	if !r.options.FullCheck {
-		sum, err := quick(path, info.Size)
-		return err == nil && sum == info.Quick, err
-	}
-	f, err := os.Open(path)
+func (r *runner) sameFile(fsys publish.FS, path string, info publish.FileInfo) (bool, error) {
+	f, err := fsys.Open(path)
 	if err != nil {
 		return false, fault.NoInput.Wrap(err)
 	}
 	defer f.Close()
+	if !r.options.FullCheck {
+		sum, err := publish.Quick(f, info.Size)
+		return err == nil && sum == info.Quick, fault.IO.Wrap(err)
+	}
 	sum, err := publish.Full(f, info.Size)
 	return err == nil && sum == info.SHA256, fault.IO.Wrap(err)
 }

@@ -148,7 +148,9 @@ func (f *Footer) scan() error {
 				f.scanEntries(c)
 			}
 		case metaCreatedBy:
-			f.created = span{fd.value, fd.end}
+			if c.want(fd.typ, typeBinary, "created_by") {
+				f.created = span{fd.value, fd.end}
+			}
 		case metaOrders:
 			if c.want(fd.typ, typeList, "column_orders") {
 				f.Ordered, f.orders = true, c.structs()

@@ -1,4 +1,4 @@
-package publish
+package publish_test
 
 import (
 	"errors"
@@ -9,6 +9,9 @@ import (
 	"slices"
 	"strings"
 	"testing"
+
+	. "catenrich/internal/publish"
+	"catenrich/internal/publish/faulty"
 )
 
 const (
@@ -20,17 +23,28 @@ const (
 // A version is what a run publishes: content by suffix.
 type version map[string]string
 
-// publish runs the whole of a publication on the model, with every kind of
+// publish runs the whole of a publication on the disk, with every kind of
 // writing in it.
-func (v version) publish(m *model, src *os.File) (err error) {
+func (v version) publish(m *faulty.Disk, src *os.File) error {
+	_, err := v.publishCounting(m, src)
+	return err
+}
+
+// publishCounting also returns how many operations there had been when it
+// began to clean up.
+func (v version) publishCounting(m *faulty.Disk, src *os.File) (aborting int, err error) {
 	r, err := Begin(m, out, Options{})
 	if err != nil {
-		return err
+		return 0, err
 	}
 	defer func() {
-		m.aborting = m.count
+		aborting = m.Count()
 		err = errors.Join(err, r.Abort())
 	}()
+	return 0, v.write(r, src)
+}
+
+func (v version) write(r *Release, src *os.File) error {
 	for _, suffix := range slices.Sorted(maps.Keys(v)) {
 		o, err := r.Create(suffix)
 		if err != nil {
@@ -41,23 +55,24 @@ func (v version) publish(m *model, src *os.File) (err error) {
 			if err := o.CopyRange(src, 0, 4); err != nil {
 				return err
 			}
-			if err := errors.Join(second(o.Write([]byte(text[4:]))), o.Patch(4, []byte(text[4:6]))); err != nil {
+			_, err := o.Write([]byte(text[4:]))
+			if err := errors.Join(err, o.Patch(4, []byte(text[4:6]))); err != nil {
 				return err
 			}
 		} else if _, err := o.Write([]byte(text)); err != nil {
 			return err
 		}
 	}
-	return r.Commit(manifestOf(v[""]))
+	return r.Commit(ManifestOf(v[""]))
 }
 
 // manifest returns the manifest that publishing v makes.
 func (v version) manifest(t *testing.T, src *os.File) string {
-	m := newModel()
+	m := faulty.New("/d")
 	if err := v.publish(m, src); err != nil {
 		t.Fatal(err)
 	}
-	return m.read(ManifestPath(out))
+	return m.Read(ManifestPath(out))
 }
 
 // A change of version, and the two manifests.
@@ -69,19 +84,19 @@ type passage struct {
 // state names the state that a passage is in, or says why it is in none that
 // may be. An old output keeps its sidecars, though a new one may have taken a
 // sidecar's place already; a new output never comes before its sidecars.
-func (p *passage) state(m *model) (string, error) {
-	output, manifest, pending := m.read(out), m.read(ManifestPath(out)), m.read(PendingPath(out))
+func (p *passage) state(m *faulty.Disk) (string, error) {
+	output, manifest, pending := m.Read(out), m.Read(ManifestPath(out)), m.Read(PendingPath(out))
 	files := fmt.Errorf("output %.20q, manifest %.200q, pending %.200q", output, manifest, pending)
 	if output == p.oldText() && manifest == p.oldManifest && output != p.new[""] {
 		for suffix, text := range p.old {
-			if got := m.read(out + suffix); got != text && got != p.new[suffix] {
+			if got := m.Read(out + suffix); got != text && got != p.new[suffix] {
 				return "", fmt.Errorf("the old %s holds %q, want %q: %w", suffix, got, text, files)
 			}
 		}
 		return "old", nil
 	}
 	for suffix, text := range p.new {
-		if got := m.read(out + suffix); got != text {
+		if got := m.Read(out + suffix); got != text {
 			return "", fmt.Errorf("the new %s holds %q, want %q: %w", suffix, got, text, files)
 		}
 	}
@@ -95,7 +110,7 @@ func (p *passage) state(m *model) (string, error) {
 }
 
 // wantOld checks that exactly the old files stand.
-func (p *passage) wantOld(m *model) error {
+func (p *passage) wantOld(m *faulty.Disk) error {
 	want := map[string]string{}
 	if p.old != nil {
 		want[ManifestPath(out)] = p.oldManifest
@@ -103,14 +118,14 @@ func (p *passage) wantOld(m *model) error {
 	for suffix, text := range p.old {
 		want[out+suffix] = text
 	}
-	for name := range m.names {
+	for _, name := range m.Names() {
 		if _, ok := want[name]; !ok {
 			return fmt.Errorf("%s is left", name)
 		}
 	}
 	for name, text := range want {
 		// The new sidecar of a listed name may have come first.
-		if got := m.read(name); got != text && got != p.new[strings.TrimPrefix(name, out)] {
+		if got := m.Read(name); got != text && got != p.new[strings.TrimPrefix(name, out)] {
 			return fmt.Errorf("%s holds %q, want %q", name, got, text)
 		}
 	}
@@ -126,19 +141,19 @@ func (p *passage) oldText() string {
 
 // wantNew checks that exactly the new files stand, besides temporaries of a
 // crashed process.
-func (p *passage) wantNew(m *model) error {
+func (p *passage) wantNew(m *faulty.Disk) error {
 	if s, err := p.state(m); s != "new" {
 		return fmt.Errorf("state %q, want new: %w", s, err)
 	}
 	want := map[string]bool{ManifestPath(out): true}
 	for suffix, text := range p.new {
 		want[out+suffix] = true
-		if got := m.read(out + suffix); got != text {
+		if got := m.Read(out + suffix); got != text {
 			return fmt.Errorf("%s holds %q, want %q", out+suffix, got, text)
 		}
 	}
-	for name := range m.names {
-		if !want[name] && !strings.HasPrefix(filepath.Base(name), temporaryPrefix) {
+	for _, name := range m.Names() {
+		if !want[name] && !strings.HasPrefix(filepath.Base(name), TemporaryPrefix) {
 			return fmt.Errorf("%s is left", name)
 		}
 	}
@@ -161,7 +176,7 @@ func passages(t *testing.T) (all []*passage, src *os.File) {
 		t.Fatal(err)
 	}
 	t.Cleanup(func() { src.Close() })
-	ends := strings.Repeat("e", quickSpan)
+	ends := strings.Repeat("e", QuickSpan)
 	plain := version{"": "copy old text"}
 	both := version{"": "copy old text", ".rejects.csv": "old r", ".columns.csv": "old c"}
 	pairs := []passage{
@@ -185,14 +200,14 @@ func passages(t *testing.T) (all []*passage, src *os.File) {
 }
 
 // before returns a model in which the old version stands, durably.
-func (p *passage) before(t *testing.T, src *os.File) *model {
-	m := newModel()
+func (p *passage) before(t *testing.T, src *os.File) *faulty.Disk {
+	m := faulty.New("/d")
 	if p.old != nil {
 		if err := p.old.publish(m, src); err != nil {
 			t.Fatal(err)
 		}
 	}
-	m = m.afterCut(^uint(0), kept)
+	m = m.AfterCut(^uint(0), faulty.Kept)
 	return m
 }
 
@@ -203,12 +218,12 @@ func TestEveryFault(t *testing.T) {
 	all, src := passages(t)
 	tried, states := 0, map[string]int{}
 	for i, p := range all {
-		for _, how := range []mishap{fail, short, late} {
+		for _, how := range []faulty.Fault{faulty.Fail, faulty.Short, faulty.Late} {
 			for n := 1; ; n++ {
 				m := p.before(t, src)
-				m.at, m.how = n, how
-				err := p.new.publish(m, src)
-				if m.count < n {
+				m.Break(n, how)
+				aborting, err := p.new.publishCounting(m, src)
+				if m.Count() < n {
 					break // there is no operation n
 				}
 				tried++
@@ -221,12 +236,12 @@ func TestEveryFault(t *testing.T) {
 				if err == nil && state != "new" {
 					t.Fatalf("%s: success in state %q", where, state)
 				}
-				if how != late && state == "old" && n <= m.aborting {
+				if how != faulty.Late && state == "old" && n <= aborting {
 					if err := p.wantOld(m); err != nil { // nothing went wrong in cleaning up
 						t.Fatalf("%s: %v", where, err)
 					}
 				}
-				m.how = none
+				m.Break(0, faulty.None)
 				if err := p.new.publish(m, src); err != nil {
 					t.Fatalf("%s: the next run: %v", where, err)
 				}
@@ -249,17 +264,17 @@ func TestEveryCrash(t *testing.T) {
 		seen, killed := map[[32]byte]bool{}, map[[32]byte]bool{} // the same disk again tells nothing new
 		for n, done := 1, false; !done; n++ {
 			m := p.before(t, src)
-			m.at, m.how = n, crash
+			m.Break(n, faulty.Crash)
 			if err := p.new.publish(m, src); err == nil {
 				done = true // and the power is cut after the last one
 			}
 			// The process may die without the machine: then what it saw stays,
 			// and the cut comes later.
-			if key := m.disk(); m.read(PendingPath(out)) != "-" && !killed[key] {
+			if key := m.Image(); m.Read(PendingPath(out)) != "-" && !killed[key] {
 				killed[key] = true
 				tried += p.crashInRecovery(t, fmt.Sprintf("passage %d, killed at operation %d", i, n), m)
 			}
-			m.cuts(func(what string, after *model) {
+			m.Cuts(func(what string, after *faulty.Disk) {
 				tried++
 				where := fmt.Sprintf("passage %d, crash at operation %d, %s", i, n, what)
 				state, bad := p.state(after)
@@ -270,12 +285,12 @@ func TestEveryCrash(t *testing.T) {
 				if done && state != "new" {
 					t.Fatalf("%s: success did not last: %q", where, state)
 				}
-				if disk := after.disk(); seen[disk] {
+				if disk := after.Image(); seen[disk] {
 					return
 				} else {
 					seen[disk] = true
 				}
-				if after.read(PendingPath(out)) != "-" {
+				if after.Read(PendingPath(out)) != "-" {
 					tried += p.crashInRecovery(t, where, after)
 				}
 				if err := p.new.publish(after, src); err != nil {
@@ -292,23 +307,23 @@ func TestEveryCrash(t *testing.T) {
 
 // crashInRecovery cuts the power a second time, while what the first cut left
 // is being recovered.
-func (p *passage) crashInRecovery(t *testing.T, where string, first *model) (tried int) {
+func (p *passage) crashInRecovery(t *testing.T, where string, first *faulty.Disk) (tried int) {
 	seen := map[[32]byte]bool{}
 	for n, done := 1, false; !done; n++ {
-		m := first.clone()
-		m.at, m.how = n, crash
+		m := first.Clone()
+		m.Break(n, faulty.Crash)
 		if _, err := Recover(m, out); err == nil {
 			done = true
 		}
-		m.cuts(func(what string, after *model) {
+		m.Cuts(func(what string, after *faulty.Disk) {
 			tried++
 			if _, bad := p.state(after); bad != nil {
 				t.Fatalf("%s; then in recovery at operation %d, %s: %v", where, n, what, bad)
 			}
-			if seen[after.disk()] {
+			if seen[after.Image()] {
 				return
 			}
-			seen[after.disk()] = true
+			seen[after.Image()] = true
 			s, err := Recover(after, out)
 			if err != nil || s.Pending || s.InTheWay != "" {
 				t.Fatalf("%s; then in recovery at operation %d, %s: recovered to %+v, %v", where, n, what, s, err)

@@ -95,8 +95,12 @@ func Retract(fsys FS, path string, ours func([]byte) bool) error {
 	if err != nil || !ours(old) {
 		return nil
 	}
-	if err := fsys.Remove(path); err != nil && !errors.Is(err, fs.ErrNotExist) {
-		return fault.IO.Wrap(err)
+	err = fsys.Remove(path)
+	if err == nil || errors.Is(err, fs.ErrNotExist) {
+		err = fsys.SyncDir(filepath.Dir(path))
 	}
-	return fault.IO.Wrap(fsys.SyncDir(filepath.Dir(path)))
+	if err != nil {
+		return fault.IO.Errorf("removing %s: %w", path, plain(err))
+	}
+	return nil
 }

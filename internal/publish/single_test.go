@@ -1,4 +1,4 @@
-package publish
+package publish_test
 
 import (
 	"bytes"
@@ -8,21 +8,23 @@ import (
 	"testing"
 
 	"catenrich/internal/fault"
+	. "catenrich/internal/publish"
+	"catenrich/internal/publish/faulty"
 )
 
 const page = "/d/report.html"
 
 func isPage(text []byte) bool { return bytes.HasPrefix(text, []byte("page")) }
 
-// withPage returns a model in which a page stands, durably; none for "".
-func withPage(t *testing.T, text string) *model {
-	m := newModel()
+// withPage returns a disk on which a page stands, durably; none for "".
+func withPage(t *testing.T, text string) *faulty.Disk {
+	m := faulty.New("/d")
 	if text != "" {
 		if err := Put(m, page, []byte(text), isPage, false); err != nil {
 			t.Fatal(err)
 		}
 	}
-	return m.afterCut(^uint(0), kept)
+	return m.AfterCut(^uint(0), faulty.Kept)
 }
 
 // TestPutThroughFaults lets each operation fail, and cuts the power before
@@ -33,22 +35,22 @@ func TestPutThroughFaults(t *testing.T) {
 		if old == "" {
 			want = map[string]bool{"page two": true, "-": true}
 		}
-		for _, how := range []mishap{fail, short, late, crash} {
+		for _, how := range []faulty.Fault{faulty.Fail, faulty.Short, faulty.Late, faulty.Crash} {
 			for n := 1; ; n++ {
 				m := withPage(t, old)
-				m.at, m.how = n, how
+				m.Break(n, how)
 				err := Put(m, page, []byte("page two"), isPage, false)
-				if m.count < n {
+				if m.Count() < n {
 					break
 				}
-				if got := m.read(page); !want[got] || err == nil && got != "page two" {
+				if got := m.Read(page); !want[got] || err == nil && got != "page two" {
 					t.Fatalf("%v at operation %d (%v) leaves %q", how, n, err, got)
 				}
-				m.cuts(func(what string, after *model) {
-					if got := after.read(page); !want[got] {
+				m.Cuts(func(what string, after *faulty.Disk) {
+					if got := after.Read(page); !want[got] {
 						t.Fatalf("%v at operation %d, %s, leaves %q", how, n, what, got)
 					}
-					if err := Put(after, page, []byte("page two"), isPage, false); err != nil || after.read(page) != "page two" {
+					if err := Put(after, page, []byte("page two"), isPage, false); err != nil || after.Read(page) != "page two" {
 						t.Fatalf("%v at operation %d, %s: the next run: %v", how, n, what, err)
 					}
 				})
@@ -80,7 +82,7 @@ func TestPutLeavesAlone(t *testing.T) {
 		{"new", false, ""}, {"ours", false, ""}, {"foreign", false, "was not written by catenrich"}, {"link", false, "was not written by catenrich"},
 		{"dir", false, "is a directory"}, {"dir", true, "is a directory"}, {"foreign", true, ""}, {"link", true, ""},
 	} {
-		before := snapshotDir(t, dir)
+		before := SnapshotDir(t, dir)
 		may := MayPut(OS, path(c.name), isPage, c.replace)
 		err := Put(OS, path(c.name), []byte("page two"), isPage, c.replace)
 		if (may == nil) != (err == nil) {
@@ -93,7 +95,7 @@ func TestPutLeavesAlone(t *testing.T) {
 			}
 		case err == nil || !strings.Contains(err.Error(), c.want) || fault.Of(err) != fault.CantCreate:
 			t.Errorf("%s, replace %v: %v, want %q", c.name, c.replace, err, c.want)
-		case snapshotDir(t, dir) != before:
+		case SnapshotDir(t, dir) != before:
 			t.Errorf("%s was refused, and the directory changed", c.name)
 		}
 	}
@@ -105,16 +107,20 @@ func TestPutLeavesAlone(t *testing.T) {
 // TestPutSame: the same text is not written again.
 func TestPutSame(t *testing.T) {
 	m := withPage(t, "page one")
-	before := m.names[page]
-	if err := Put(m, page, []byte("page one"), isPage, false); err != nil || m.names[page] != before {
-		t.Errorf("%v, and the file is another", err)
+	before, err := m.Lstat(page)
+	if err != nil {
+		t.Fatal(err)
+	}
+	err = Put(m, page, []byte("page one"), isPage, false)
+	if after, statErr := m.Lstat(page); err != nil || statErr != nil || !after.ModTime().Equal(before.ModTime()) {
+		t.Errorf("%v, and the file was written again", err)
 	}
 }
 
 // TestRetract removes what is ours, and nothing else.
 func TestRetract(t *testing.T) {
 	for text, want := range map[string]string{"page one": "-", "mine": "mine"} {
-		m := newModel()
+		m := faulty.New("/d")
 		f, err := m.Create(page)
 		if err != nil {
 			t.Fatal(err)
@@ -122,11 +128,11 @@ func TestRetract(t *testing.T) {
 		if _, err := f.Write([]byte(text)); err != nil {
 			t.Fatal(err)
 		}
-		if err := Retract(m, page, isPage); err != nil || m.read(page) != want {
-			t.Errorf("retracting %q leaves %q (%v), want %q", text, m.read(page), err, want)
+		if err := Retract(m, page, isPage); err != nil || m.Read(page) != want {
+			t.Errorf("retracting %q leaves %q (%v), want %q", text, m.Read(page), err, want)
 		}
 	}
-	if err := Retract(newModel(), page, isPage); err != nil {
+	if err := Retract(faulty.New("/d"), page, isPage); err != nil {
 		t.Errorf("retracting nothing: %v", err)
 	}
 }

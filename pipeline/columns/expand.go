@@ -43,11 +43,15 @@ func instances(s *job.Settings) []instance {
 	for i := range registry {
 		e := &registry[i]
 		for item, member := range e.Family.members(s) {
+			name := e.Name
+			if member != "" {
+				name += "_" + member
+			}
 			for form := ValueForm; form <= HighForm; form++ {
 				if !e.has(form) {
 					continue
 				}
-				in := instance{Entry: e, item: item, form: form, name: e.Name + member + form.suffix()}
+				in := instance{Entry: e, item: item, form: form, name: name + form.suffix()}
 				if e.Missing != nil {
 					in.why = e.Missing(s, item)
 				}

@@ -257,9 +257,9 @@ func (s *Scratch) fit(b *Bound) {
 		}
 		return rows
 	}
-	s.rows.lines = values("line", lineTerm, j.Settings.LineNames())
-	s.rows.radios = values("radio", radioTerm, j.Settings.RadioNames())
-	s.rows.sizes = values("size", sizeTerm, j.Settings.SizeNames())
+	s.rows.lines = values("line", lineTerm, PerLine.members(&j.Settings))
+	s.rows.radios = values("radio", radioTerm, PerRadio.members(&j.Settings))
+	s.rows.sizes = values("size", sizeTerm, PerSize.members(&j.Settings))
 	for i := range j.Selections {
 		s.rows.selections = append(s.rows.selections, newSelectionRows(&j.Selections[i], j.Bands, b.where, b.selected[i]))
 	}

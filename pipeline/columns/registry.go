@@ -100,38 +100,32 @@ func (e *Entry) Pattern() string {
 	return e.Name + [...]string{"", "_<band>", "_<line>", "_<radio>", "_<size>", "_<selection>", "_<sample>"}[e.Family]
 }
 
-// members returns the names of the family's members in a job, in its order.
+// members returns the names of the family's members in a job, in its order; a
+// single column has one member without a name.
 func (f Family) members(s *job.Settings) []string {
-	var names []string
 	switch f {
-	case Single:
-		return []string{""}
 	case PerBand:
-		for i := range s.Bands {
-			names = append(names, "_"+s.Bands[i].Name)
-		}
+		return names(s.Bands, func(m *job.BandSettings) string { return m.Name })
 	case PerLine:
-		for i := range s.Lines {
-			names = append(names, "_"+s.Lines[i].Name)
-		}
+		return names(s.Lines, func(m *job.LineSettings) string { return m.Name })
 	case PerRadio:
-		for i := range s.Radios {
-			names = append(names, "_"+s.Radios[i].Name)
-		}
+		return names(s.Radios, func(m *job.RadioSettings) string { return m.Name })
 	case PerSize:
-		for i := range s.Sizes {
-			names = append(names, "_"+s.Sizes[i].Name)
-		}
+		return names(s.Sizes, func(m *job.SizeSettings) string { return m.Name })
 	case PerSelection:
-		for i := range s.Selections {
-			names = append(names, "_"+s.Selections[i].Name)
-		}
+		return names(s.Selections, func(m *job.SelectionSettings) string { return m.Name })
 	case PerCut:
-		for i := range s.Cuts {
-			names = append(names, "_"+s.Cuts[i].Name)
-		}
+		return names(s.Cuts, func(m *job.CutSettings) string { return m.Name })
 	}
-	return names
+	return []string{""}
+}
+
+func names[T any](list []T, name func(*T) string) []string {
+	all := make([]string, len(list))
+	for i := range list {
+		all[i] = name(&list[i])
+	}
+	return all
 }
 
 // StatusName is the column that says why the others are null. It is always

@@ -97,27 +97,3 @@ type CutSettings struct {
 	BrighterThan float64 `json:"brighterThan"`
 	Redshift     Numbers `json:"redshift"`
 }
-
-// LineNames, RadioNames and SizeNames are the members of each family, in order.
-func (s *Settings) LineNames() (names []string) {
-	for i := range s.Lines {
-		names = append(names, s.Lines[i].Name)
-	}
-	return names
-}
-
-// RadioNames is described at [Settings.LineNames].
-func (s *Settings) RadioNames() (names []string) {
-	for i := range s.Radios {
-		names = append(names, s.Radios[i].Name)
-	}
-	return names
-}
-
-// SizeNames is described at [Settings.LineNames].
-func (s *Settings) SizeNames() (names []string) {
-	for i := range s.Sizes {
-		names = append(names, s.Sizes[i].Name)
-	}
-	return names
-}
