@@ -328,22 +328,6 @@ func (p *Plan) warn() {
 	}
 }
 
-// Inspect opens the first input and binds the job to it, so that a plan shows
-// what a run would stumble over at once.
-func (p *Plan) Inspect() error {
-	if len(p.Units) == 0 || p.Units[0].Input == Standard {
-		return nil
-	}
-	u := &p.Units[0]
-	src, err := u.in.Open(u.Input, &p.Job.Settings.Input)
-	if err != nil {
-		return err
-	}
-	defer src.Close()
-	_, err = p.Kernel.Bind(src.Schema())
-	return err
-}
-
 // spec tells a sink about the columns it appends.
 func (p *Plan) spec() table.Spec {
 	out := &p.Job.Settings.Output
