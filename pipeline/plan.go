@@ -7,6 +7,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"slices"
 	"sort"
 	"strings"
 
@@ -51,6 +52,8 @@ type Plan struct {
 
 	hash    publish.Digest
 	partial bool // a share of the job's units
+	here    string
+	literal map[string]bool // patterns that were taken as the name of a file
 }
 
 // Size is how many bytes of input the plan knows of.
@@ -65,7 +68,8 @@ func (p *Plan) Size() int64 {
 // NewPlan finds the inputs of a job and decides where each output goes.
 // Nothing is opened and nothing written.
 func NewPlan(j *job.Job, formats Formats) (*Plan, error) {
-	p := &Plan{Job: j}
+	p := &Plan{Job: j, literal: make(map[string]bool)}
+	p.here, _ = os.Getwd() // a failure shows where a relative path is used
 	if err := p.findUnits(formats); err != nil {
 		return nil, err
 	}
@@ -140,6 +144,7 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 		if info.IsDir() {
 			return nil, fmt.Errorf("%s is a directory: name the files in it, as %s", pattern, filepath.Join(pattern, "*.csv"))
 		}
+		p.literal[pattern] = true
 		return []Unit{{ID: filepath.Base(pattern), Input: pattern, Size: info.Size()}}, nil
 	}
 	fixed, rest := doublestar.SplitPattern(filepath.ToSlash(pattern))
@@ -147,18 +152,23 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", pattern, bare(err))
 	}
-	var units []Unit
-	for _, id := range matches {
+	units := make([]Unit, len(matches)) // those without an id are none
+	err = together(len(matches), func(i int) error {
+		id := matches[i]
 		path := filepath.Join(fixed, filepath.FromSlash(id))
 		info, err := os.Stat(path)
 		if err != nil {
-			return nil, fmt.Errorf("%s: %w", path, bare(err))
+			return fmt.Errorf("%s: %w", path, bare(err))
 		}
-		if p.sidecar(id) || describes(path) || !info.Mode().IsRegular() {
-			continue
+		if !p.sidecar(id) && !describes(path) && info.Mode().IsRegular() {
+			units[i] = Unit{ID: id, Input: path, Size: info.Size()}
 		}
-		units = append(units, Unit{ID: id, Input: path, Size: info.Size()})
+		return nil
+	})
+	if err != nil {
+		return nil, err
 	}
+	units = slices.DeleteFunc(units, func(u Unit) bool { return u.ID == "" })
 	if len(units) == 0 {
 		return nil, fmt.Errorf("%s: no such file, or nothing matches", pattern)
 	}
@@ -217,15 +227,16 @@ func (p *Plan) outputPath(u *Unit) string {
 // input, or that would take their own outputs for inputs.
 func (p *Plan) checkPaths() error {
 	outputs := make(map[string]*Unit)
+	release := p.ReleasePath()
 	for i := range p.Units {
 		u := &p.Units[i]
 		if (u.Input == Standard || u.Output == Standard) && len(p.Units) > 1 {
 			return fmt.Errorf("standard input and output (-) go with a single unit, and there are %d", len(p.Units))
 		}
-		if strings.EqualFold(publish.ManifestPath(u.Output), p.ReleasePath()) {
+		if strings.EqualFold(publish.ManifestPath(u.Output), release) {
 			return fmt.Errorf("%s would be written to %s, whose manifest would have the place of the release manifest: rename it", u.Input, u.Output)
 		}
-		key := strings.ToLower(absolute(u.Output))
+		key := strings.ToLower(p.absolute(u.Output))
 		if other, ok := outputs[key]; ok && u.Output != Standard {
 			return fmt.Errorf("%s and %s would both be written to %s (compared without case): put them below different directories", other.Input, u.Input, u.Output)
 		}
@@ -236,11 +247,11 @@ func (p *Plan) checkPaths() error {
 		if u.Input == Standard {
 			continue
 		}
-		if other, ok := outputs[strings.ToLower(absolute(u.Input))]; ok {
+		if other, ok := outputs[strings.ToLower(p.absolute(u.Input))]; ok {
 			return fmt.Errorf("%s is an input, and the output of %s: set %s to another place", u.Input, other.Input, p.Job.Place("output.directory"))
 		}
 	}
-	return errors.Join(p.checkBeside(outputs), p.checkPatterns(), p.checkSameFiles(outputs))
+	return errors.Join(p.checkBeside(outputs), p.checkPatterns(), p.checkSameFiles())
 }
 
 // checkBeside refuses an output whose name another one's manifest or sidecar
@@ -249,7 +260,7 @@ func (p *Plan) checkBeside(outputs map[string]*Unit) error {
 	for i := range p.Units {
 		u := &p.Units[i]
 		for _, path := range append([]string{publish.ManifestPath(u.Output), publish.PendingPath(u.Output)}, publish.Sidecars(u.Output)...) {
-			if other, ok := outputs[strings.ToLower(absolute(path))]; ok {
+			if other, ok := outputs[strings.ToLower(p.absolute(path))]; ok {
 				return fmt.Errorf("%s would be written to %s, which belongs to the output of %s: rename it, or put it below another directory", other.Input, other.Output, u.Input)
 			}
 		}
@@ -267,8 +278,13 @@ func (p *Plan) checkPatterns() error {
 		if !filepath.IsAbs(pattern) {
 			pattern = filepath.Join(p.Job.Base, pattern)
 		}
-		for _, u := range p.Units {
-			if match, _ := doublestar.PathMatch(absolute(pattern), absolute(u.Output)); match && u.Output != Standard {
+		if p.literal[pattern] {
+			continue // it can match only itself, which is no output
+		}
+		pattern = p.absolute(pattern)
+		for k := range p.Units {
+			u := &p.Units[k]
+			if match, _ := doublestar.PathMatch(pattern, p.absolute(u.Output)); match && u.Output != Standard {
 				return fmt.Errorf("the pattern %q (%s) matches the job's own output %s: narrow it, or set %s to another place",
 					p.Job.Patterns[i], p.Job.Place("input.files"), u.Output, p.Job.Place("output.directory"))
 			}
@@ -278,27 +294,28 @@ func (p *Plan) checkPatterns() error {
 }
 
 // checkSameFiles finds an output that is an input by another name.
-func (p *Plan) checkSameFiles(outputs map[string]*Unit) error {
-	for _, u := range outputs {
+func (p *Plan) checkSameFiles() error {
+	return together(len(p.Units), func(i int) error {
+		u := &p.Units[i]
 		out, err := os.Stat(u.Output)
 		if u.Output == Standard || err != nil {
-			continue
+			return nil
 		}
 		in, err := os.Stat(u.Input)
 		if err == nil && os.SameFile(in, out) {
 			return fmt.Errorf("%s and %s are the same file: an input is never overwritten", u.Input, u.Output)
 		}
-	}
-	return nil
+		return nil
+	})
 }
 
 // absolute is the path from the root, or the path itself where the working
-// directory is gone.
-func absolute(path string) string {
-	if abs, err := filepath.Abs(path); err == nil {
-		return abs
+// directory is gone. The directory is asked for once a plan, not once a path.
+func (p *Plan) absolute(path string) string {
+	if filepath.IsAbs(path) || p.here == "" {
+		return filepath.Clean(path)
 	}
-	return filepath.Clean(path)
+	return filepath.Join(p.here, path)
 }
 
 // warn collects what the user should know before a run.
@@ -309,22 +326,6 @@ func (p *Plan) warn() {
 				p.Job.Place(fmt.Sprintf("cosmology[%d]", i)), 1+z))
 		}
 	}
-}
-
-// Inspect opens the first input and binds the job to it, so that a plan shows
-// what a run would stumble over at once.
-func (p *Plan) Inspect() error {
-	if len(p.Units) == 0 || p.Units[0].Input == Standard {
-		return nil
-	}
-	u := &p.Units[0]
-	src, err := u.in.Open(u.Input, &p.Job.Settings.Input)
-	if err != nil {
-		return err
-	}
-	defer src.Close()
-	_, err = p.Kernel.Bind(src.Schema())
-	return err
 }
 
 // spec tells a sink about the columns it appends.

@@ -98,14 +98,16 @@ func summarize(outcomes []Outcome, elapsed time.Duration) (*Summary, error) {
 
 // runner is what the units of a run share.
 type runner struct {
-	plan    *Plan
-	options Options
-	watch   Observer
-	depth   int // chunks in flight, for all units together
-	scratch sync.Pool
-	batches sync.Pool
-	warned  sync.Once // of a filesystem without locks
-	swept   sync.Map  // directories whose abandoned temporaries were removed
+	plan     *Plan
+	options  Options
+	watch    Observer
+	depth    int                 // chunks in flight, for all units together
+	long     *semaphore.Weighted // memory for chunks of long records, of longSize bytes
+	longSize int64
+	scratch  sync.Pool
+	batches  sync.Pool
+	warned   sync.Once // of a filesystem without locks
+	swept    sync.Map  // directories whose abandoned temporaries were removed
 
 	retracting sync.Once // of the report of an earlier run
 	retracted  error     // what came of it
@@ -122,8 +124,11 @@ func newRunner(p *Plan, o Options, watch Observer) *runner {
 	r := &runner{plan: p, options: o, watch: watch}
 	r.scratch.New = func() any { return new(columns.Scratch) }
 	r.batches.New = func() any { return new(table.Batch) }
-	room := (o.Memory - fixedMemory) / r.chunkMemory()
-	r.depth = int(max(min(room, int64(2*o.Workers)), 1))
+	room := max(o.Memory-fixedMemory, 0)
+	r.depth = int(max(min(room/r.chunkMemory(), int64(2*o.Workers)), 1))
+	r.options.Workers = min(o.Workers, r.depth) // the others would wait for chunks, or have units that memory has no room for
+	r.longSize = max(room, 1)
+	r.long = semaphore.NewWeighted(r.longSize)
 	return r
 }
 
@@ -131,12 +136,11 @@ func newRunner(p *Plan, o Options, watch Observer) *runner {
 // columns, and its part of the output, for the widest format.
 func (r *runner) chunkMemory() int64 {
 	const (
-		rows    = 1 << 16
-		perIn   = 16 // decoded value, state, and the decoder's own copy
-		perOut  = 24 // computed value, encoded value, and its text or page
-		rawText = 2 << 20
+		rows   = 1 << 16
+		perIn  = 16 // decoded value, state, and the decoder's own copy
+		perOut = 24 // computed value, encoded value, and its text or page
 	)
-	return rows*int64(perIn*len(r.plan.Kernel.Needs())+perOut*len(r.plan.Kernel.Added())) + rawText
+	return rows*int64(perIn*len(r.plan.Kernel.Needs())+perOut*len(r.plan.Kernel.Added())) + usualChunk
 }
 
 // limitMemory tells the garbage collector what the run may take, unless the

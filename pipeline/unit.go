@@ -151,6 +151,7 @@ type work struct {
 	unit    *Unit
 	outcome *Outcome
 	src     table.Source
+	chunks  *budgeted // src, as copy reads it
 	sink    table.Sink
 	bound   *columns.Bound
 	workers int
@@ -237,7 +238,10 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	if err := w.sink.Begin(out); err != nil {
 		return err
 	}
-	if err := stream(ctx, w.src, w.workers, w.depthFor(w.workers), w.chunk, w.collect); err != nil {
+	w.chunks = &budgeted{Source: w.src, room: w.long, size: w.longSize}
+	err := stream(ctx, w.chunks, w.workers, w.depthFor(w.workers), w.chunk, w.collect)
+	w.chunks.end()
+	if err != nil {
 		return err
 	}
 	if err := w.finishChecks(); err != nil {
@@ -285,7 +289,7 @@ func (w *work) chunk(worker int, r *result) error {
 func (w *work) collect(r *result) error {
 	defer func() {
 		w.batches.Put(r.batch)
-		w.src.Release(r.chunk)
+		w.chunks.Release(r.chunk)
 	}()
 	r.chunk.FirstRow = w.rows
 	for i := range r.batch.Rejects {

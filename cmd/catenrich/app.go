@@ -5,15 +5,16 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"log/slog"
 	"os"
 	"os/signal"
 	"strings"
 	"syscall"
 
 	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
 
 	"catenrich/internal/fault"
+	"catenrich/internal/table"
 )
 
 // app is one call of the program, with everything it may touch from outside.
@@ -21,6 +22,7 @@ type app struct {
 	stdin          io.ReadCloser
 	stdout, stderr io.Writer
 	caught         os.Signal // the signal that ended the run, or nil
+	logFormat      string    // --log-format
 }
 
 // run is the program without the process: it returns the exit code.
@@ -45,16 +47,25 @@ velocities, flags, and a status that explains every empty cell.`,
   catenrich run survey.csv --redshift z --add distances,times -o enriched.csv
   catenrich plan nightly.toml
   catenrich columns`,
-		Args:          cobra.NoArgs,
-		SilenceErrors: true,
-		SilenceUsage:  true,
+		Args:              cobra.ArbitraryArgs,
+		SilenceErrors:     true,
+		SilenceUsage:      true,
+		PersistentPreRunE: func(*cobra.Command, []string) error { return a.checkLogFormat() },
 	}
+	root.RunE = func(c *cobra.Command, args []string) error {
+		if len(args) > 0 {
+			return unknownCommand(c, args[0])
+		}
+		return c.Help()
+	}
+	root.PersistentFlags().StringVar(&a.logFormat, "log-format", logText, "how messages are written to standard error: text or json")
 	root.SetOut(a.stdout)
 	root.SetErr(a.stderr)
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
-		return fault.Usage.Errorf("%w (`%s --help` lists the flags)", err, c.CommandPath())
+		return fault.Usage.Errorf("%w%s (`%s --help` lists the flags)", err, nearestFlag(c, err), c.CommandPath())
 	})
-	root.AddCommand(a.runCommand(), a.planCommand(), a.gatherCommand(), a.columnsCommand(), a.verifyCommand(), a.explainCommand(), a.reportCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.runCommand(), a.planCommand(), a.gatherCommand(), a.columnsCommand(), a.verifyCommand(), a.explainCommand(), a.reportCommand(), a.demoCommand(), a.manCommand(), a.versionCommand())
+	a.registerCompletions(root)
 	return root
 }
 
@@ -88,7 +99,7 @@ func (a *app) exit(err error) int {
 	}
 	if errors.Is(err, context.Canceled) {
 		if number, ok := a.caught.(syscall.Signal); ok {
-			fmt.Fprintf(a.stderr, "catenrich: stopped by signal (%v); nothing half-written is left\n", number)
+			a.fault(fmt.Sprintf("stopped by signal (%v); nothing half-written is left", number))
 			return 128 + int(number)
 		}
 	}
@@ -97,9 +108,32 @@ func (a *app) exit(err error) int {
 		class = fault.Usage
 	}
 	for _, line := range strings.Split(err.Error(), "\n") {
-		fmt.Fprintf(a.stderr, "catenrich: %s\n", line)
+		a.fault(line)
 	}
 	return int(class)
+}
+
+// unknownCommand names the commands that may have been meant.
+func unknownCommand(root *cobra.Command, name string) error {
+	var known []string
+	for _, c := range root.Commands() {
+		if c.IsAvailableCommand() {
+			known = append(known, c.Name())
+		}
+	}
+	return fault.Usage.Errorf("unknown command %q; the nearest are %s (`catenrich --help` lists them)", name, table.Quote(table.Nearest(name, known, 2)))
+}
+
+// nearestFlag names the flags that may have been meant by one that is unknown.
+func nearestFlag(c *cobra.Command, err error) string {
+	var unknown *pflag.NotExistError
+	if !errors.As(err, &unknown) || len(unknown.GetSpecifiedName()) < 2 {
+		return ""
+	}
+	var known []string
+	c.Flags().VisitAll(func(f *pflag.Flag) { known = append(known, "--"+f.Name) })
+	near := table.Nearest("--"+unknown.GetSpecifiedName(), known, 2)
+	return "; the nearest are " + strings.Join(near, " and ")
 }
 
 // isUsage recognises the faults that the command-line library finds itself: it
@@ -111,18 +145,4 @@ func isUsage(err error) bool {
 		}
 	}
 	return false
-}
-
-// logger writes the log to standard error, without the time: the scheduler
-// that keeps the log adds its own.
-func (a *app) logger(level slog.Level) *slog.Logger {
-	return slog.New(slog.NewTextHandler(a.stderr, &slog.HandlerOptions{
-		Level: level,
-		ReplaceAttr: func(groups []string, attr slog.Attr) slog.Attr {
-			if attr.Key == slog.TimeKey && len(groups) == 0 {
-				return slog.Attr{}
-			}
-			return attr
-		},
-	}))
 }

@@ -86,5 +86,6 @@ func (a *app) runDemo(c *cobra.Command, path string, quiet bool) error {
 	if err != nil {
 		return err
 	}
-	return a.execute(c.Context(), plan, pipeline.Options{Workers: runtime.NumCPU()}, quiet)
+	_, err = a.execute(c.Context(), plan, pipeline.Options{Workers: runtime.NumCPU()}, quiet)
+	return err
 }

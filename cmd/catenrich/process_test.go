@@ -21,7 +21,7 @@ const asProgram = "CATENRICH_TEST_PROGRAM"
 
 func TestMain(m *testing.M) {
 	if os.Getenv(asProgram) != "" {
-		main()
+		asked()
 	}
 	os.Exit(m.Run())
 }

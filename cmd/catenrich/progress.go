@@ -35,10 +35,18 @@ type progress struct {
 // newProgress is for inputs of total bytes; 0 is unknown.
 func (a *app) newProgress(total int64, quiet bool, log *slog.Logger) *progress {
 	p := &progress{log: log, start: time.Now(), last: time.Now(), total: total, quiet: quiet}
-	if f, ok := a.stderr.(*os.File); ok && !quiet && term.IsTerminal(int(f.Fd())) {
+	if !quiet && a.logFormat != logJSON && drawable(a.stderr) {
 		p.bar = newBar(a.stderr, total)
 	}
 	return p
+}
+
+// drawable reports whether a bar can be drawn: on a terminal that can move its
+// cursor, and whose user has not asked for plain output (no-color.org). Colour
+// itself is never used.
+func drawable(w io.Writer) bool {
+	f, ok := w.(*os.File)
+	return ok && term.IsTerminal(int(f.Fd())) && os.Getenv("TERM") != "dumb" && os.Getenv("NO_COLOR") == ""
 }
 
 func newBar(w io.Writer, total int64) *progressbar.ProgressBar {

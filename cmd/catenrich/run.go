@@ -14,7 +14,6 @@ import (
 	"github.com/spf13/cobra"
 
 	"catenrich/internal/fault"
-	"catenrich/internal/status"
 	"catenrich/pipeline"
 	"catenrich/pipeline/job"
 	"catenrich/pipeline/report"
@@ -33,6 +32,7 @@ type runFlags struct {
 	noReport bool
 	previous string
 	share    string
+	metrics  string
 	profile  profileFlags
 }
 
@@ -49,21 +49,23 @@ under its name, or not at all.`,
   catenrich run survey.csv --redshift z --add distances -o enriched.csv
   catenrich run *.csv.gz --velocity cz --velocity-convention optical --add all -o out/
   catenrich run nightly.toml --share 3/8
-  zcat survey.csv.gz | catenrich run - --redshift z --add luminosity_distance -o -`,
+  zcat survey.csv.gz | catenrich run - --redshift z --add luminosity_distance -o -
+  catenrich run nightly.toml --log-format json --metrics /var/lib/node_exporter/catenrich.prom`,
 		RunE: func(c *cobra.Command, args []string) error {
 			return a.runJob(c.Context(), &flags, &settings, args)
 		},
 	}
-	c.Flags().IntVar(&flags.workers, "workers", runtime.NumCPU(), "how many chunks are worked on at once")
-	c.Flags().StringVar(&flags.memory, "memory", "", "memory that chunks may take, such as 300M (default: 256M, and 40M for each worker beyond two)")
+	c.Flags().IntVar(&flags.workers, "workers", runtime.NumCPU(), "how many chunks are worked on at once: `N`")
+	c.Flags().StringVar(&flags.memory, "memory", "", "memory that chunks may take, a `SIZE` such as 300M (default: 256M, and 40M for each worker beyond two)")
 	c.Flags().BoolVar(&flags.replace, "replace", false, "replace an output that catenrich did not write")
 	c.Flags().BoolVar(&flags.wait, "wait", false, "wait for another run that holds the same output")
 	c.Flags().BoolVarP(&flags.quiet, "quiet", "q", false, "print warnings and errors only")
 	c.Flags().StringVar(&flags.check, "check", "quick", "how to see that a unit is up to date: quick, or full, which reads everything")
-	c.Flags().StringVar(&flags.saveJob, "save-job", "", "also write the job file that the flags amount to")
+	c.Flags().StringVar(&flags.saveJob, "save-job", "", "also write the job file that the flags amount to, to `FILE`")
 	c.Flags().BoolVar(&flags.noReport, "no-report", false, "make no report.html in the output directory")
-	c.Flags().StringVar(&flags.previous, "previous", "", "earlier release that the report compares with: a directory or a manifest")
-	c.Flags().StringVar(&flags.share, "share", "", "do share I of N (I/N) of the units; `catenrich gather` ends the release when all are done")
+	c.Flags().StringVar(&flags.previous, "previous", "", "earlier release that the report compares with: `PATH` of a directory or a manifest")
+	c.Flags().StringVar(&flags.share, "share", "", "do share `I/N` of the units; catenrich gather ends the release when all are done")
+	c.Flags().StringVar(&flags.metrics, "metrics", "", "also write the run's figures to `FILE`, as OpenMetrics text (for a node exporter's textfile collector: NAME.prom)")
 	flags.profile.register(c.Flags())
 	settings.register(c.Flags())
 	return c
@@ -76,6 +78,11 @@ func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, a
 	if err != nil {
 		return err
 	}
+	metrics, err := newMetrics(flags.metrics, args)
+	if err != nil {
+		return err
+	}
+	defer func() { err = errors.Join(err, metrics.write(err)) }()
 	options, err := flags.options()
 	if err != nil {
 		return err
@@ -100,29 +107,33 @@ func (a *app) runJob(ctx context.Context, flags *runFlags, settings *jobFlags, a
 	if shares > 0 {
 		plan = plan.Share(share, shares)
 	}
-	return a.execute(ctx, plan, options, flags.quiet)
+	metrics.plan = plan
+	metrics.summary, err = a.execute(ctx, plan, options, flags.quiet)
+	return err
 }
 
 // execute runs a plan and reports how it went.
-func (a *app) execute(ctx context.Context, plan *pipeline.Plan, options pipeline.Options, quiet bool) error {
+func (a *app) execute(ctx context.Context, plan *pipeline.Plan, options pipeline.Options, quiet bool) (*pipeline.Summary, error) {
 	level := slog.LevelInfo
 	if quiet {
 		level = slog.LevelWarn
 	}
-	show := a.newProgress(plan.Size(), quiet, a.logger(level))
-	options.Stdin, options.Stdout, options.Stderr = a.stdin, a.stdout, a.stderr
+	log := a.logger(level)
+	show := a.newProgress(plan.Size(), quiet, log)
+	options.Stdin, options.Stdout, options.Stderr = a.stdin, a.stdout, a.messages()
 	for _, w := range plan.Warnings {
 		show.Warn(w)
 	}
 	summary, err := pipeline.Run(ctx, plan, options, show)
 	show.finish()
-	if err != nil {
-		return err
-	}
-	if !quiet {
+	switch {
+	case err != nil || quiet:
+	case a.logFormat == logJSON:
+		logSummary(log, plan, summary)
+	default:
 		fmt.Fprint(a.stderr, summaryText(plan, summary))
 	}
-	return nil
+	return summary, err
 }
 
 // options checks the flags, all at once.
@@ -187,25 +198,4 @@ func saveJob(path string, f *job.File) error {
 		return fault.IO.Errorf("--save-job: %w", err)
 	}
 	return fault.IO.Wrap(out.Close())
-}
-
-// summaryText is what a run says at its end.
-func summaryText(p *pipeline.Plan, s *pipeline.Summary) string {
-	var b strings.Builder
-	fmt.Fprintf(&b, "%s: %d written, %d up to date, in %.2f s\n", plural(s.Units, "unit"), s.Written, s.UpToDate, s.Elapsed.Seconds())
-	fmt.Fprintf(&b, "rows    %d, and %s without a row\n", s.Rows, plural(s.Rejects, "record"))
-	fmt.Fprintf(&b, "columns %d added\n", len(p.Kernel.Added()))
-	if s.Written > 0 && s.Elapsed > 0 {
-		fmt.Fprintf(&b, "output  %s\n", bytesText(s.Size))
-	}
-	for i, n := range s.Bits {
-		if n > 0 {
-			fmt.Fprintf(&b, "status  %s with bit %d: %s\n", plural(n, "row"), 1<<i, status.Describe(i))
-		}
-	}
-	fmt.Fprintf(&b, "config  %s\n", p.ConfigHash)
-	if s.Report != "" {
-		fmt.Fprintf(&b, "report  %s: %s\n", s.Report, s.Verdict)
-	}
-	return b.String()
 }

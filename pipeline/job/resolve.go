@@ -146,6 +146,15 @@ func (r *resolver) places() {
 	}
 }
 
+// InputSettings resolves how the input is read, whatever the rest of the job
+// is, for who only wants to look into a catalogue.
+func (f *File) InputSettings() InputSettings {
+	var s InputSettings
+	r := &resolver{file: f}
+	r.input(&s)
+	return s
+}
+
 func (r *resolver) input(s *InputSettings) {
 	in := &r.file.Input
 	s.Format = r.choice("input.format", in.Format, "", Formats...)
