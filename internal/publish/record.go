@@ -103,11 +103,7 @@ func Quick(f io.ReaderAt, size int64) (Digest, error) {
 	h.Write(append(strconv.AppendInt(nil, size, 10), '\n'))
 	span := min(size, quickSpan)
 	for _, off := range []int64{0, size - span} {
-		n, err := io.Copy(h, io.NewSectionReader(f, off, span))
-		if err == nil && n < span {
-			err = io.ErrUnexpectedEOF
-		}
-		if err != nil {
+		if err := hashRange(h, f, off, span); err != nil {
 			return Digest{}, err
 		}
 	}

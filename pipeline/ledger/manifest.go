@@ -93,15 +93,11 @@ func Encode(m *Manifest) ([]byte, error) {
 	if m.Sidecars == nil {
 		m.Sidecars = []publish.Sidecar{}
 	}
-	rest, err := canonical(m)
+	text, err := seal(signed{Manifest: m})
 	if err != nil {
 		return nil, fault.Internal.Wrap(fmt.Errorf("encoding the manifest of %s: %w", m.Unit, err))
 	}
-	text, err := canonical(signed{m, sha256.Sum256(rest)})
-	if err != nil {
-		return nil, fault.Internal.Wrap(fmt.Errorf("encoding the manifest of %s: %w", m.Unit, err))
-	}
-	return append(text, '\n'), nil
+	return text, nil
 }
 
 // canonical encodes v by RFC 8785.

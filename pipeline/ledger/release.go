@@ -112,18 +112,14 @@ func EncodeRelease(r *Release) ([]byte, error) {
 	if err := r.Check(); err != nil {
 		return nil, fault.Internal.Wrap(fmt.Errorf("rows of the release are not accounted for: %w", err))
 	}
-	rest, err := canonical(r)
-	if err != nil {
-		return nil, fault.Internal.Wrap(fmt.Errorf("encoding the release manifest: %w", err))
-	}
-	text, err := canonical(struct {
+	text, err := seal(struct {
 		*Release
 		Self publish.Digest `json:"self"`
-	}{r, sha256.Sum256(rest)})
+	}{Release: r})
 	if err != nil {
 		return nil, fault.Internal.Wrap(fmt.Errorf("encoding the release manifest: %w", err))
 	}
-	return append(text, '\n'), nil
+	return text, nil
 }
 
 // ParseRelease reads a release manifest and proves it whole, as [Parse] does
