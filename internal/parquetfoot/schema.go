@@ -79,11 +79,11 @@ type Leaf struct {
 
 // element is a SchemaElement as far as it matters here.
 type element struct {
-	name                      string
-	physical, length, repeat  int64
-	children, scale, convert  int64
-	hasType, hasLog bool
-	logical                   Logical
+	name                     string
+	physical, length, repeat int64
+	children, scale, convert int64
+	hasType, hasLog          bool
+	logical                  Logical
 }
 
 // scanSchema reads the flattened tree: each group is followed by its children.
