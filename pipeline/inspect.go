@@ -3,7 +3,10 @@ package pipeline
 import (
 	"context"
 	"io"
+	"runtime"
 	"strings"
+
+	"golang.org/x/sync/errgroup"
 
 	"catenrich/internal/publish"
 	"catenrich/internal/table"
@@ -34,6 +37,9 @@ func (p *Plan) Inspect(ctx context.Context) (*Inspection, error) {
 	in := &Inspection{Estimates: make([]int64, n), States: make([]string, n), Reasons: make([]string, n)}
 	r := newRunner(p, Options{}, nil)
 	growths := make(map[[2]*Format]float64)
+	var states errgroup.Group
+	states.SetLimit(lookers * runtime.GOMAXPROCS(0))
+	defer states.Wait()
 	for i := range p.Units {
 		u := &p.Units[i]
 		if u.Input == Standard {
@@ -53,12 +59,12 @@ func (p *Plan) Inspect(ctx context.Context) (*Inspection, error) {
 		if growth == 0 {
 			in.Estimates[i] = -1
 		}
-		var err error
-		if in.States[i], in.Reasons[i], err = r.state(u); err != nil {
-			return nil, err
-		}
+		states.Go(func() (err error) {
+			in.States[i], in.Reasons[i], err = r.state(u)
+			return err
+		})
 	}
-	return in, nil
+	return in, states.Wait()
 }
 
 // state says whether a unit is up to date, and if not, why.

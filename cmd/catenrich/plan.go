@@ -208,6 +208,9 @@ func (v *planView) print(w io.Writer) error {
 	return t.Flush()
 }
 
+// shownUnits is how many units a page lists.
+const shownUnits = 40
+
 func (v *planView) printUnits(w io.Writer) {
 	var states []string
 	for _, s := range []string{pipeline.StateToDo, pipeline.StateDone, pipeline.StateBlocked} {
@@ -216,7 +219,11 @@ func (v *planView) printUnits(w io.Writer) {
 		}
 	}
 	fmt.Fprintf(w, "\n%s: %s; %s in, %s out\n", plural(len(v.Units), "unit"), strings.Join(states, ", "), bytesText(v.InputBytes), about(v.OutputBytes))
-	for _, u := range v.Units {
+	for i, u := range v.Units {
+		if more := len(v.Units) - i; i == shownUnits && more > 1 {
+			fmt.Fprintf(w, "  and %d more, which --json lists\n", more)
+			break
+		}
 		state := u.State
 		if u.Reason != "" {
 			state += ": " + u.Reason
