@@ -80,7 +80,7 @@ func (r *runner) settled(ctx context.Context, u *Unit) (m *ledger.Manifest, why 
 	if u.Input == Standard {
 		return nil, "", false, fault.Config.Errorf("what was read from standard input cannot be looked at again: run the job")
 	}
-	m, why, pending, err := r.standing(u)
+	m, why, pending, err := r.standing(ctx, u)
 	if err != nil || !pending {
 		return m, why, false, err
 	}
@@ -92,10 +92,10 @@ func (r *runner) settled(ctx context.Context, u *Unit) (m *ledger.Manifest, why 
 		return nil, "", false, err
 	}
 	defer lock.Release()
-	if _, err := publish.Recover(r.options.FS, u.Output); err != nil {
+	if _, err := publish.Recover(ctx, r.options.FS, u.Output); err != nil {
 		return nil, "", false, err
 	}
-	m, why, _, err = r.standing(u)
+	m, why, _, err = r.standing(ctx, u)
 	return m, why, why == "", err
 }
 

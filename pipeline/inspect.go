@@ -60,7 +60,7 @@ func (p *Plan) Inspect(ctx context.Context) (*Inspection, error) {
 			in.Estimates[i] = -1
 		}
 		states.Go(func() (err error) {
-			in.States[i], in.Reasons[i], err = r.state(u)
+			in.States[i], in.Reasons[i], err = r.state(ctx, u)
 			return err
 		})
 	}
@@ -68,7 +68,7 @@ func (p *Plan) Inspect(ctx context.Context) (*Inspection, error) {
 }
 
 // state says whether a unit is up to date, and if not, why.
-func (r *runner) state(u *Unit) (state, why string, err error) {
+func (r *runner) state(ctx context.Context, u *Unit) (state, why string, err error) {
 	if u.Output == Standard {
 		return StateToDo, "goes to standard output", nil
 	}
@@ -79,7 +79,7 @@ func (r *runner) state(u *Unit) (state, why string, err error) {
 	if s.InTheWay != "" {
 		return StateBlocked, s.InTheWay + " (run would want --replace)", nil
 	}
-	_, why, _, err = r.standing(u)
+	_, why, _, err = r.standing(ctx, u)
 	if err != nil || why == "" {
 		return StateDone, "", err
 	}

@@ -39,7 +39,7 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 	if u.Output == Standard {
 		return r.streamUnit(ctx, u, workers, o)
 	}
-	if done, err := r.upToDate(u, o); done || err != nil {
+	if done, err := r.upToDate(ctx, u, o); done || err != nil {
 		return err
 	}
 	src, err := r.open(u)
@@ -56,10 +56,10 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 		return err
 	}
 	defer lock.Release()
-	if done, err := r.finished(u, o); done || err != nil {
+	if done, err := r.finished(ctx, u, o); done || err != nil {
 		return err
 	}
-	release, err := publish.Begin(r.options.FS, u.Output, publish.Options{Replace: r.options.Replace})
+	release, err := publish.Begin(r.options.FS, u.Output, publish.Options{Replace: r.options.Replace, Context: ctx})
 	if err != nil {
 		return err
 	}
@@ -68,7 +68,7 @@ func (r *runner) publishUnit(ctx context.Context, u *Unit, workers int, o *Outco
 		return err
 	}
 	if lock != nil && lock.Warning != nil { // another run may have done the same meanwhile
-		if done, err := r.upToDate(u, o); done || err != nil {
+		if done, err := r.upToDate(ctx, u, o); done || err != nil {
 			return err
 		}
 	}
@@ -111,14 +111,14 @@ func (r *runner) open(u *Unit) (table.Source, error) {
 // finished ends what a crash interrupted, and reports whether nothing is left
 // to do: a pending publication was completed, or another run did the work while
 // this one waited for its lock.
-func (r *runner) finished(u *Unit, o *Outcome) (bool, error) {
+func (r *runner) finished(ctx context.Context, u *Unit, o *Outcome) (bool, error) {
 	if err := r.sweep(filepath.Dir(u.Output)); err != nil {
 		return false, err
 	}
-	if _, err := publish.Recover(r.options.FS, u.Output); err != nil {
+	if _, err := publish.Recover(ctx, r.options.FS, u.Output); err != nil {
 		return false, err
 	}
-	return r.upToDate(u, o)
+	return r.upToDate(ctx, u, o)
 }
 
 // sweep removes, once a run, what crashed runs left in a directory.

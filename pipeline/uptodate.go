@@ -1,6 +1,7 @@
 package pipeline
 
 import (
+	"context"
 	"fmt"
 	"os"
 
@@ -12,11 +13,11 @@ import (
 
 // upToDate reports whether the output stands, made by the same job of the same
 // input; the outcome then says so.
-func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
+func (r *runner) upToDate(ctx context.Context, u *Unit, o *Outcome) (bool, error) {
 	if u.Input == Standard {
 		return false, nil
 	}
-	m, why, _, err := r.standing(u)
+	m, why, _, err := r.standing(ctx, u)
 	if err != nil || why != "" {
 		return false, err
 	}
@@ -29,13 +30,13 @@ func (r *runner) upToDate(u *Unit, o *Outcome) (bool, error) {
 // standing gives the manifest of a unit whose output stands, made by the same
 // job of the same input; else it says why that is not so. pending means that a
 // publication was begun and is not finished.
-func (r *runner) standing(u *Unit) (m *ledger.Manifest, why string, pending bool, err error) {
+func (r *runner) standing(ctx context.Context, u *Unit) (m *ledger.Manifest, why string, pending bool, err error) {
 	state, err := publish.Look(r.options.FS, u.Output)
 	if err != nil {
 		return nil, "", false, err
 	}
 	if why = r.standingManifest(u, &state, &m); why == "" {
-		why, err = r.sameFiles(u, m)
+		why, err = r.sameFiles(ctx, u, m)
 	}
 	return m, why, state.Pending, err
 }
@@ -76,7 +77,7 @@ func (r *runner) standingManifest(u *Unit, s *publish.State, m **ledger.Manifest
 // sameFiles compares input, output and sidecars with what the manifest says of
 // them: by size and quick fingerprint, or all of their bytes; and the output
 // must not be older than the input. It says what differs.
-func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) {
+func (r *runner) sameFiles(ctx context.Context, u *Unit, m *ledger.Manifest) (why string, err error) {
 	in, err := os.Stat(u.Input)
 	if err != nil {
 		return "", fault.NoInput.Wrap(err)
@@ -104,7 +105,7 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) 
 		}
 	}
 	for _, f := range files {
-		same, err := r.sameFile(f.fsys, f.path, f.info)
+		same, err := r.sameFile(ctx, f.fsys, f.path, f.info)
 		if err != nil {
 			return "", err
 		}
@@ -115,7 +116,7 @@ func (r *runner) sameFiles(u *Unit, m *ledger.Manifest) (why string, err error) 
 	return "", nil
 }
 
-func (r *runner) sameFile(fsys publish.FS, path string, info publish.FileInfo) (bool, error) {
+func (r *runner) sameFile(ctx context.Context, fsys publish.FS, path string, info publish.FileInfo) (bool, error) {
 	f, err := fsys.Open(path)
 	if err != nil {
 		return false, fault.NoInput.Wrap(err)
@@ -125,7 +126,7 @@ func (r *runner) sameFile(fsys publish.FS, path string, info publish.FileInfo) (
 		sum, err := publish.Quick(f, info.Size)
 		return err == nil && sum == info.Quick, fault.IO.Wrap(err)
 	}
-	sum, err := publish.Full(f, info.Size)
+	sum, err := publish.Full(publish.Until(ctx, f), info.Size)
 	return err == nil && sum == info.SHA256, fault.IO.Wrap(err)
 }
 

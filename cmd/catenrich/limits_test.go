@@ -132,27 +132,28 @@ func TestMemory(t *testing.T) {
 		z[i] = float64(1+i%99991) / 20_000
 	}
 	rows := catalogue(600_000, 1)
-	long := "id,z,note\n" + strings.Repeat("1,0.5,"+strings.Repeat("0123456789abcdef", 1<<20)+"\n", 12)
+	long := "id,z,note\n" + strings.Repeat("1,0.5,"+strings.Repeat("0123456789abcdef", 1<<20)+"\n", 24)
 	const mebi = 1 << 20
 	for _, c := range []struct {
 		name, file, text string
 		copies           int
-		most             int // MiB
+		add              string
+		memory, most     int // MiB
 	}{
-		{"CSV", "a.csv", rows, 1, 64 + 48},
-		{"Parquet in one row group", "a.parquet", parquetOf(t, len(z), z), 1, 64 + 128},
-		{"Parquet in many row groups", "a.parquet", parquetOf(t, 10_000, z), 1, 64 + 128},
-		{"FITS", "a.fits", smallFITS(z...), 1, 64 + 48},
-		{"many units", "a.parquet", parquetOf(t, 70_000, z[:70_000]), 24, 64 + 128},
-		{"CSV with long records", "a.csv", long, 1, 64 + 5*16*2},
+		{"CSV", "a.csv", rows, 1, "all", 64, 64 + 48},
+		{"Parquet in one row group", "a.parquet", parquetOf(t, len(z), z), 1, "all", 64, 64 + 128},
+		{"Parquet in many row groups", "a.parquet", parquetOf(t, 10_000, z), 1, "all", 64, 64 + 128},
+		{"FITS", "a.fits", smallFITS(z...), 1, "all", 64, 64 + 48},
+		{"many units", "a.parquet", parquetOf(t, 70_000, z[:70_000]), 24, "all", 64, 64 + 128},
+		{"CSV with long records", "a.csv", long, 1, "lookback_time", 200, 200 + 5*16*2},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			t.Chdir(t.TempDir())
 			for i := range c.copies {
 				writeFile(t, fmt.Sprintf("in/%d-%s", i, c.file), c.text)
 			}
-			writeFile(t, "job.toml", strings.NewReplacer("in/*.csv", "in/*", `"luminosity_distance", "lookback_time", "superluminal_now"`, `"all"`).Replace(propertyJob))
-			code, stderr := confined(t, tellPeak, "peak", "run", "job.toml", "--quiet", "--workers", "16", "--memory", "64M")
+			writeFile(t, "job.toml", strings.NewReplacer("in/*.csv", "in/*", `"luminosity_distance", "lookback_time", "superluminal_now"`, strconv.Quote(c.add)).Replace(propertyJob))
+			code, stderr := confined(t, tellPeak, "peak", "run", "job.toml", "--quiet", "--workers", "16", "--memory", fmt.Sprintf("%dM", c.memory))
 			if code != 0 {
 				t.Fatalf("exit %d\n%s", code, stderr)
 			}
@@ -160,7 +161,7 @@ func TestMemory(t *testing.T) {
 			if err != nil || kib == 0 {
 				t.Fatalf("the peak is %d KiB, %v", kib, err)
 			}
-			t.Logf("%d MiB of input, --memory 64M, --workers 16: peak %d MiB, at most %d allowed", c.copies*len(c.text)/mebi, kib>>10, c.most)
+			t.Logf("%d MiB of input, --memory %dM, --workers 16: peak %d MiB, at most %d allowed", c.copies*len(c.text)/mebi, c.memory, kib>>10, c.most)
 			if kib>>10 > c.most {
 				t.Errorf("peak memory is %d MiB, want at most %d", kib>>10, c.most)
 			}

@@ -25,6 +25,7 @@ func (r *Release) Commit(manifest func(Record) ([]byte, error)) error {
 		return fault.IO.Wrap(fmt.Errorf("publishing %s: %w", r.target, plain(err)))
 	}
 	r.ended = true
+	r.cancel()
 	return nil
 }
 
@@ -195,7 +196,7 @@ func (r *Release) manifestWithoutPending(record Record, text []byte) error {
 	if err != nil {
 		return err
 	}
-	if ours, err := record.Output.matches(r.fsys, r.target, info, Full); err != nil || !ours {
+	if ours, err := record.Output.matches(r.fsys, r.target, info, fullUntil(r.ctx)); err != nil || !ours {
 		return errors.Join(err, fault.TryAgain.Errorf("another run replaced the output meanwhile"))
 	}
 	temp, err := r.writeManifest(text)

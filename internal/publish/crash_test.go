@@ -312,7 +312,7 @@ func (p *passage) crashInRecovery(t *testing.T, where string, first *faulty.Disk
 	for n, done := 1, false; !done; n++ {
 		m := first.Clone()
 		m.Break(n, faulty.Crash)
-		if _, err := Recover(m, out); err == nil {
+		if _, err := Recover(t.Context(), m, out); err == nil {
 			done = true
 		}
 		m.Cuts(func(what string, after *faulty.Disk) {
@@ -324,7 +324,7 @@ func (p *passage) crashInRecovery(t *testing.T, where string, first *faulty.Disk
 				return
 			}
 			seen[after.Image()] = true
-			s, err := Recover(after, out)
+			s, err := Recover(t.Context(), after, out)
 			if err != nil || s.Pending || s.InTheWay != "" {
 				t.Fatalf("%s; then in recovery at operation %d, %s: recovered to %+v, %v", where, n, what, s, err)
 			}

@@ -1,6 +1,7 @@
 package publish
 
 import (
+	"context"
 	"crypto/sha256"
 	"hash"
 	"io"
@@ -21,6 +22,7 @@ var blocks = sync.Pool{New: func() any { b := make([]byte, 0, blockSize); return
 // A digester hashes one output in its own goroutine, in the order in which
 // tasks arrive. Its queue is short, so it holds at most queueLength blocks.
 type digester struct {
+	ctx  context.Context // ends the reading of ranges
 	todo chan task
 	done chan struct{}
 
@@ -45,8 +47,8 @@ type mark struct {
 	err error
 }
 
-func newDigester() *digester {
-	d := &digester{todo: make(chan task, queueLength), done: make(chan struct{})}
+func newDigester(ctx context.Context) *digester {
+	d := &digester{ctx: ctx, todo: make(chan task, queueLength), done: make(chan struct{})}
 	go d.run()
 	return d
 }
@@ -61,7 +63,7 @@ func (d *digester) run() {
 			blocks.Put(t.block)
 		case t.src != nil:
 			if d.err == nil {
-				d.err = hashRange(h, t.src, t.off, t.n)
+				d.err = hashRange(h, Until(d.ctx, t.src), t.off, t.n)
 			}
 			t.src.Close()
 		case t.mark != nil:

@@ -128,7 +128,7 @@ func TestManifestThatLies(t *testing.T) {
 	if err := os.WriteFile(PendingPath(target), lie, 0o666); err != nil {
 		t.Fatal(err)
 	}
-	if _, err := Recover(OS, target); err != nil {
+	if _, err := Recover(t.Context(), OS, target); err != nil {
 		t.Fatal(err)
 	}
 	if got, err := os.ReadFile(victim); err != nil || string(got) != "v" {

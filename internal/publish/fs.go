@@ -30,8 +30,9 @@ type File interface {
 	Sync() error
 	Stat() (fs.FileInfo, error)
 
-	// CopyRange appends n bytes of src from off. It returns how many it
-	// wrote, and an error if that is less than n.
+	// CopyRange appends at most n bytes of src from off, and at least one. It
+	// returns how many it wrote. Fewer than n without an error means that the
+	// rest is to be asked for, so that a caller can stop in between.
 	CopyRange(src *os.File, off, n int64) (int64, error)
 }
 
@@ -95,6 +96,9 @@ func (osFS) Scratch(dir string) (*os.File, error) {
 	return f, nil
 }
 
+// copyStep is how much is copied in one go, unless it can be shared.
+const copyStep = 16 << 20
+
 type osFile struct {
 	*os.File
 	back *writeBack // nil for a file that is only read
@@ -113,7 +117,7 @@ func (f osFile) Close() error {
 
 func (f osFile) CopyRange(src *os.File, off, n int64) (int64, error) {
 	done, err := copyInKernel(f.File, src, off, n, f.back.wrote)
-	if err != nil || done == n {
+	if n = min(n, copyStep); err != nil || done >= n {
 		return done, err
 	}
 	// Not this kernel, or not between these filesystems.

@@ -12,13 +12,11 @@ import (
 	"golang.org/x/sys/unix"
 )
 
-// copyStep is how much is copied between two reports of progress.
-const copyStep = 64 << 20
-
-// copyInKernel appends as many as it can of n bytes of src from off to dst
-// without bringing them into this process, and tells progress of them as they
-// come, unless they are shared and have no need to be written. Fewer than n with a nil error means
-// that the kernel declines, and the caller copies the rest itself.
+// copyInKernel appends as many as it can of n bytes of src from off to dst, but
+// for what is shared no more than copyStep, without bringing them into this
+// process, and tells progress of them as they come, unless they are shared and
+// have no need to be written. Fewer with a nil error means that the kernel
+// declines, and the caller copies the rest itself.
 //
 // A whole file at the start of an empty one is shared where the filesystem can
 // (FICLONE: btrfs, XFS); copy_file_range shares what block boundaries allow,
@@ -27,11 +25,11 @@ func copyInKernel(dst, src *os.File, off, n int64, progress func(int64)) (int64,
 	if off == 0 && clone(dst, src, n) {
 		return n, nil
 	}
+	n = min(n, copyStep)
 	var done int64
 	for done < n {
 		from := off + done
-		step := int(min(n-done, copyStep))
-		m, err := unix.CopyFileRange(int(src.Fd()), &from, int(dst.Fd()), nil, step, 0)
+		m, err := unix.CopyFileRange(int(src.Fd()), &from, int(dst.Fd()), nil, int(n-done), 0)
 		switch {
 		case errors.Is(err, unix.EINTR):
 			continue

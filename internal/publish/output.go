@@ -1,6 +1,7 @@
 package publish
 
 import (
+	"context"
 	"crypto/sha256"
 	"fmt"
 	"io"
@@ -15,6 +16,7 @@ import (
 // goroutine uses it. After the first error every call returns that error: what
 // is in the file then is not worth finishing.
 type Output struct {
+	ctx   context.Context // ends copying and hashing
 	fsys  FS
 	file  File
 	dir   string
@@ -85,7 +87,7 @@ func (o *Output) writeBlock() *[]byte {
 
 func (o *Output) hash(t task) {
 	if o.digest == nil {
-		o.digest = newDigester()
+		o.digest = newDigester(o.ctx)
 	}
 	o.digest.todo <- t
 }
@@ -113,13 +115,18 @@ func (o *Output) CopyRange(src *os.File, off, n int64) error {
 		return o.fail("copying to", err)
 	}
 	o.hash(task{src: again, off: off, n: n})
-	done, err := o.file.CopyRange(src, off, n)
-	o.offset += done
-	if err == nil && done < n {
-		err = io.ErrUnexpectedEOF
-	}
-	if err != nil {
-		return o.fail("copying "+src.Name()+" to", err)
+	for done := int64(0); done < n; {
+		m, err := int64(0), o.ctx.Err()
+		if err == nil {
+			m, err = o.file.CopyRange(src, off+done, n-done)
+		}
+		if err == nil && m == 0 {
+			err = io.ErrUnexpectedEOF
+		}
+		o.offset, done = o.offset+m, done+m
+		if err != nil {
+			return o.fail("copying "+src.Name()+" to", err)
+		}
 	}
 	return nil
 }
@@ -152,7 +159,7 @@ func (o *Output) Mark() func() [sha256.Size]byte {
 		return func() (none [sha256.Size]byte) { return }
 	}
 	if o.patched {
-		sum, err := Full(o.file, o.offset)
+		sum, err := Full(Until(o.ctx, o.file), o.offset)
 		if err != nil {
 			o.fail("reading", err)
 		}
@@ -215,7 +222,7 @@ func (o *Output) describe(info FileInfo) (FileInfo, error) {
 	info.Size = o.offset
 	var err error
 	if o.err == nil && o.patched {
-		if info.SHA256, err = Full(o.file, o.offset); err != nil {
+		if info.SHA256, err = Full(Until(o.ctx, o.file), o.offset); err != nil {
 			o.fail("reading back", err)
 		}
 	}

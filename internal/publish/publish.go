@@ -31,6 +31,7 @@
 package publish
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io/fs"
@@ -48,6 +49,10 @@ type Options struct {
 	// is a symbolic link, to be replaced. The link's own target is not
 	// touched. A directory is never replaced.
 	Replace bool
+
+	// Context ends copying and hashing, which may take long for a large
+	// input, with its own error; nil is never.
+	Context context.Context
 }
 
 // A Release is one output with its sidecars and manifest, on its way. Create
@@ -55,6 +60,8 @@ type Options struct {
 // has ended.
 type Release struct {
 	fsys    FS
+	ctx     context.Context
+	cancel  context.CancelFunc
 	target  string
 	dir     string
 	replace bool
@@ -77,7 +84,10 @@ func Begin(fsys FS, target string, o Options) (*Release, error) {
 	if err := makeDir(fsys, dir); err != nil {
 		return nil, cannotMake(dir, err)
 	}
-	state, err := Recover(fsys, target)
+	if o.Context == nil {
+		o.Context = context.Background()
+	}
+	state, err := Recover(o.Context, fsys, target)
 	if err != nil {
 		return nil, err
 	}
@@ -88,6 +98,7 @@ func Begin(fsys FS, target string, o Options) (*Release, error) {
 	if err := r.refuse(state); err != nil {
 		return nil, err
 	}
+	r.ctx, r.cancel = context.WithCancel(o.Context)
 	return r, nil
 }
 
@@ -167,7 +178,7 @@ func (r *Release) Create(suffix string) (*Output, error) {
 	if err != nil {
 		return nil, cannotMake(r.target+suffix, err)
 	}
-	o := &Output{fsys: r.fsys, file: file, dir: r.dir, temp: temp, shown: r.target + suffix}
+	o := &Output{ctx: r.ctx, fsys: r.fsys, file: file, dir: r.dir, temp: temp, shown: r.target + suffix}
 	r.outputs[suffix] = o
 	return o, nil
 }
@@ -190,6 +201,7 @@ func (r *Release) Abort() error {
 		return nil
 	}
 	r.ended = true
+	r.cancel()
 	var errs []error
 	for _, o := range r.outputs {
 		o.close() // what it held is being thrown away
@@ -200,7 +212,7 @@ func (r *Release) Abort() error {
 		}
 	}
 	if r.started && !r.moved { // an error may hide a rename that happened: Recover looks
-		if _, err := Recover(r.fsys, r.target); err != nil {
+		if _, err := Recover(context.Background(), r.fsys, r.target); err != nil {
 			errs = append(errs, err)
 		}
 	}

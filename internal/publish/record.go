@@ -1,6 +1,7 @@
 package publish
 
 import (
+	"context"
 	"crypto/sha256"
 	"encoding/hex"
 	"encoding/json"
@@ -108,6 +109,21 @@ func Quick(f io.ReaderAt, size int64) (Digest, error) {
 		}
 	}
 	return Digest(h.Sum(nil)), nil
+}
+
+// Until returns f, whose reading fails with the error of ctx once that ends.
+func Until(ctx context.Context, f io.ReaderAt) io.ReaderAt { return readUntil{ctx, f} }
+
+type readUntil struct {
+	ctx context.Context
+	f   io.ReaderAt
+}
+
+func (r readUntil) ReadAt(p []byte, off int64) (int, error) {
+	if err := r.ctx.Err(); err != nil {
+		return 0, err
+	}
+	return r.f.ReadAt(p, off)
 }
 
 // Full returns the SHA-256 of the first size bytes of f, read from the start.

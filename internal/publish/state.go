@@ -2,6 +2,7 @@ package publish
 
 import (
 	"bytes"
+	"context"
 	"errors"
 	"fmt"
 	"io"
@@ -158,6 +159,11 @@ func (s *State) lookAtOutput(fsys FS, target string) error {
 // A reading digests the first size bytes of a file: [Quick] or [Full].
 type reading func(f io.ReaderAt, size int64) (Digest, error)
 
+// fullUntil is [Full] until ctx ends.
+func fullUntil(ctx context.Context) reading {
+	return func(f io.ReaderAt, size int64) (Digest, error) { return Full(Until(ctx, f), size) }
+}
+
 // matches compares the file at path with what a record says of it, by its size
 // and one of its digests.
 func (f FileInfo) matches(fsys FS, path string, info fs.FileInfo, read reading) (bool, error) {
@@ -221,10 +227,10 @@ func (s *State) lookAtSidecars(fsys FS, target string) error {
 // that were published ahead of their output, and what was there before stands.
 //
 // The caller holds the output's lock, where there are locks.
-func Recover(fsys FS, target string) (State, error) {
+func Recover(ctx context.Context, fsys FS, target string) (State, error) {
 	s, err := look(fsys, target)
 	if err == nil && s.Pending {
-		if err = resolve(fsys, target, &s); err == nil {
+		if err = resolve(ctx, fsys, target, &s); err == nil {
 			s, err = look(fsys, target)
 		}
 	}
@@ -234,11 +240,11 @@ func Recover(fsys FS, target string) (State, error) {
 	return s, nil
 }
 
-func resolve(fsys FS, target string, s *State) error {
+func resolve(ctx context.Context, fsys FS, target string, s *State) error {
 	finished := false
 	if s.pending != nil && s.output != nil {
 		var err error
-		if finished, err = s.pending.Output.matches(fsys, target, s.output, Full); err != nil {
+		if finished, err = s.pending.Output.matches(fsys, target, s.output, fullUntil(ctx)); err != nil {
 			return err
 		}
 	}

@@ -1,6 +1,7 @@
 package publish
 
 import (
+	"context"
 	"errors"
 	"io"
 	"io/fs"
@@ -14,7 +15,7 @@ type Stream struct{ Output }
 
 // NewStream returns an output that writes to w; name is for messages.
 func NewStream(w io.Writer, name string) *Stream {
-	return &Stream{Output{fsys: OS, file: pipe{w}, dir: os.TempDir(), shown: name}}
+	return &Stream{Output{ctx: context.Background(), fsys: OS, file: pipe{w}, dir: os.TempDir(), shown: name}}
 }
 
 // Finish writes what is left and returns size and SHA-256 of all; the quick

@@ -1,6 +1,9 @@
 package publish
 
-import "os"
+import (
+	"os"
+	"sync/atomic"
+)
 
 // A writeBack has the disk begin with what a file was given so far, while the
 // rest is still computed. Without it the kernel waits, for half a minute or
@@ -13,6 +16,8 @@ type writeBack struct {
 	file *os.File
 	todo chan span     // nil until the first
 	done chan struct{} // closed when the goroutine has left
+
+	stopped atomic.Bool
 
 	written int64 // bytes of the file so far
 	handed  int64 // of them, those that the disk was told of
@@ -48,7 +53,11 @@ func (w *writeBack) wrote(n int64) {
 func (w *writeBack) run() {
 	defer close(w.done)
 	for s := range w.todo {
-		beginWriting(w.file, s.off, s.n)
+		// Step by step: a disk with a long queue holds the call, and a run that
+		// is told to stop should not wait for it.
+		for end := s.off + s.n; s.off < end && !w.stopped.Load(); s.off += writeBackStep {
+			beginWriting(w.file, s.off, min(writeBackStep, end-s.off))
+		}
 	}
 }
 
@@ -57,6 +66,7 @@ func (w *writeBack) stop() {
 	if w == nil || w.todo == nil {
 		return
 	}
+	w.stopped.Store(true)
 	close(w.todo)
 	<-w.done
 	w.todo = nil
