@@ -457,7 +457,10 @@ func parquetOf(t *testing.T, group int, z []float64) string {
 	}
 	w := file.NewParquetWriter(&b, root)
 	for rows := range slices.Chunk(z, group) {
-		g := w.AppendRowGroup()
+		g, err := w.AppendRowGroupChecked()
+		if err != nil {
+			t.Fatal(err)
+		}
 		c, err := g.NextColumn()
 		if err != nil {
 			t.Fatal(err)

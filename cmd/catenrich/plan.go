@@ -2,6 +2,7 @@ package main
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -17,6 +18,7 @@ import (
 
 func (a *app) planCommand() *cobra.Command {
 	var asJSON bool
+	var shares int
 	var settings jobFlags
 	c := &cobra.Command{
 		Use:   "plan [JOB.toml | FILES…]",
@@ -28,9 +30,13 @@ first input of each format is opened, and its first rows are computed to estimat
 the size of the outputs. Nothing is written.`,
 		Example: `  catenrich plan nightly.toml
   catenrich plan survey.csv --redshift z --add distances -o enriched.csv
+  catenrich plan nightly.toml --shares 8
   catenrich plan nightly.toml --json | jq -r .config_hash
   catenrich plan nightly.toml --json | jq '.units[] | select(.state != "up to date")'`,
 		RunE: func(c *cobra.Command, args []string) error {
+			if err := checkShares(shares); err != nil {
+				return err
+			}
 			resolved, _, err := settings.resolve(args)
 			if err != nil {
 				return err
@@ -45,12 +51,14 @@ the size of the outputs. Nothing is written.`,
 			}
 			view := viewPlan(plan, found)
 			if asJSON {
+				view.Shares = shareViews(plan, shares)
 				return printJSON(a.stdout, view)
 			}
-			return view.print(a.stdout)
+			return errors.Join(view.print(a.stdout), sharesText(a.stdout, plan, shares))
 		},
 	}
 	c.Flags().BoolVar(&asJSON, "json", false, "print JSON")
+	c.Flags().IntVar(&shares, "shares", 0, "also show how the units would be dealt to so many shares (run --share I/N)")
 	settings.register(c.Flags())
 	return c
 }
@@ -69,6 +77,7 @@ type planView struct {
 	Added       []pipeline.Description `json:"columns"`
 	Warnings    []string               `json:"warnings"`
 	Settings    json.RawMessage        `json:"settings"`
+	Shares      []shareView            `json:"shares,omitempty"`
 }
 
 type unitView struct {
