@@ -49,6 +49,10 @@ func stream(ctx context.Context, src table.Source, workers, depth int, work func
 	for worker := range workers {
 		wg.Go(func() {
 			for t := range todo {
+				if err := inner.Err(); err != nil { // nobody wants it any more
+					t.done <- err
+					continue
+				}
 				t.done <- guard(func() error { return work(worker, &t.result) })
 			}
 		})

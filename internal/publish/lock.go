@@ -4,9 +4,7 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/hex"
-	"errors"
 	"fmt"
-	"io/fs"
 	"os"
 	"path/filepath"
 	"time"
@@ -63,10 +61,8 @@ func Acquire(ctx context.Context, dir, name string, wait bool) (*Lock, error) {
 		return nil, ctx.Err()
 	case cannotLock(err):
 		return &Lock{Warning: fmt.Errorf("%s: this filesystem has no locks (%w): runs at the same time would do the same work twice", dir, plain(err))}, nil
-	case errors.Is(err, fs.ErrPermission):
-		return nil, fault.CantCreate.Wrap(fmt.Errorf("locking %s: %w", path, plain(err)))
 	}
-	return nil, fault.IO.Wrap(fmt.Errorf("locking %s: %w", path, plain(err)))
+	return nil, cannotMake("the lock "+path, err)
 }
 
 // Release lets the next run in. It may be called on a nil Lock, and twice.
