@@ -27,8 +27,10 @@ func (a *app) planCommand() *cobra.Command {
 if not why; the cosmologies with ages and horizons; which columns are read, where
 each term comes from, and which columns are added; the config hash; warnings. The
 first input of each format is opened, and its first rows are computed to estimate
-the size of the outputs. Nothing is written.`,
+the size of the outputs. Nothing is written. Of more than 10 000 units the outputs are
+not looked at: gather does that.`,
 		Example: `  catenrich plan nightly.toml
+  catenrich plan nightly.toml --shares 8
   catenrich plan survey.csv --redshift z --add distances -o enriched.csv
   catenrich plan nightly.toml --shares 8
   catenrich plan nightly.toml --json | jq -r .config_hash
@@ -222,7 +224,7 @@ const shownUnits = 40
 
 func (v *planView) printUnits(w io.Writer) {
 	var states []string
-	for _, s := range []string{pipeline.StateToDo, pipeline.StateDone, pipeline.StateBlocked} {
+	for _, s := range []string{pipeline.StateToDo, pipeline.StateDone, pipeline.StateBlocked, pipeline.StateUnseen} {
 		if n := v.States[s]; n > 0 {
 			states = append(states, fmt.Sprintf("%d %s", n, s))
 		}
@@ -263,7 +265,11 @@ func (m *modelView) print(w io.Writer) {
 	fmt.Fprintf(w, "\ncosmology%s\n  %s\n", suffix, m.Parameters)
 	fmt.Fprintf(w, "  age today\t%s\tHubble time %s\n", quantity("%.4g Gyr", m.AgeGyr), quantity("%.4g Gyr", m.HubbleTime))
 	fmt.Fprintf(w, "  Hubble sphere\t%s\t%s\t%s\t(the Hubble distance: what is beyond it recedes faster than light)\n", quantity("%.5g Mpc", m.HubbleDistance), quantity("%.4g Gly", m.HubbleDistanceGly), quantity("z = %.4g", m.ZHubbleSphere))
-	fmt.Fprintf(w, "  event horizon\t%s\t%s\t%s\t(no signal sent today arrives beyond it)\n", quantity("%.5g Mpc", m.EventHorizon), quantity("%.4g Gly", m.EventHorizonGly), quantity("z = %.4g", m.ZEventHorizon))
+	if m.EventHorizon == nil {
+		fmt.Fprintf(w, "  event horizon\tnone\t\t\t(a signal sent today arrives everywhere)\n")
+	} else {
+		fmt.Fprintf(w, "  event horizon\t%s\t%s\t%s\t(no signal sent today arrives beyond it)\n", quantity("%.5g Mpc", m.EventHorizon), quantity("%.4g Gly", m.EventHorizonGly), quantity("z = %.4g", m.ZEventHorizon))
+	}
 	fmt.Fprintf(w, "  particle horizon\t%s\t%s\t\t(nothing beyond it has been seen yet)\n", quantity("%.5g Mpc", m.ParticleHorizon), quantity("%.4g Gly", m.ParticleHorizonGly))
 }
 
