@@ -63,7 +63,6 @@ func followPage(t *testing.T, path, bin string) {
 		language, info, text := page[m[2]:m[3]], strings.TrimSpace(page[m[4]:m[5]]), page[m[6]:m[7]]
 		between := page[end:m[0]]
 		now.WriteString(page[end:m[6]])
-		end = m[6]
 		switch {
 		case language == "text" && strings.TrimSpace(between) == "```" && printed != "":
 			if mask(printed) != mask(text) {

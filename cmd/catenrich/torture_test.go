@@ -220,7 +220,10 @@ func oneColumn(t *testing.T, node schema.Node, fill func(file.ColumnChunkWriter)
 		t.Fatal(err)
 	}
 	w := file.NewParquetWriter(&b, root)
-	g := w.AppendRowGroup()
+	g, err := w.AppendRowGroupChecked()
+	if err != nil {
+		t.Fatal(err)
+	}
 	c, err := g.NextColumn()
 	if err == nil {
 		err = fill(c)
