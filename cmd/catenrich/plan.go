@@ -32,7 +32,6 @@ not looked at: gather does that.`,
 		Example: `  catenrich plan nightly.toml
   catenrich plan nightly.toml --shares 8
   catenrich plan survey.csv --redshift z --add distances -o enriched.csv
-  catenrich plan nightly.toml --shares 8
   catenrich plan nightly.toml --json | jq -r .config_hash
   catenrich plan nightly.toml --json | jq '.units[] | select(.state != "up to date")'`,
 		RunE: func(c *cobra.Command, args []string) error {
@@ -266,7 +265,7 @@ func (m *modelView) print(w io.Writer) {
 	fmt.Fprintf(w, "  age today\t%s\tHubble time %s\n", quantity("%.4g Gyr", m.AgeGyr), quantity("%.4g Gyr", m.HubbleTime))
 	fmt.Fprintf(w, "  Hubble sphere\t%s\t%s\t%s\t(the Hubble distance: what is beyond it recedes faster than light)\n", quantity("%.5g Mpc", m.HubbleDistance), quantity("%.4g Gly", m.HubbleDistanceGly), quantity("z = %.4g", m.ZHubbleSphere))
 	if m.EventHorizon == nil {
-		fmt.Fprintf(w, "  event horizon\tnone\t\t\t(a signal sent today arrives everywhere)\n")
+		fmt.Fprintf(w, "  event horizon\tnone\t\t\t(this model has none)\n")
 	} else {
 		fmt.Fprintf(w, "  event horizon\t%s\t%s\t%s\t(no signal sent today arrives beyond it)\n", quantity("%.5g Mpc", m.EventHorizon), quantity("%.4g Gly", m.EventHorizonGly), quantity("z = %.4g", m.ZEventHorizon))
 	}
