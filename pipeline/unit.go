@@ -239,7 +239,8 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 		return err
 	}
 	w.chunks = &budgeted{Source: w.src, room: w.long, size: w.longSize}
-	err := stream(ctx, w.chunks, w.workers, w.depthFor(w.workers), w.chunk, w.collect)
+	chunk := func(worker int, r *result) error { return w.chunk(ctx, worker, r) }
+	err := stream(ctx, w.chunks, w.workers, w.depthFor(w.workers), chunk, w.collect)
 	w.chunks.end()
 	if err != nil {
 		return err
@@ -270,8 +271,9 @@ func (w *work) copy(ctx context.Context, out table.Output) error {
 	return nil
 }
 
-// chunk is a worker's part: decode, compute, count, encode.
-func (w *work) chunk(worker int, r *result) error {
+// chunk is a worker's part: decode, compute, count, encode. Short records and
+// many columns make it long, so it looks at ctx in between.
+func (w *work) chunk(ctx context.Context, worker int, r *result) error {
 	b := w.batches.Get().(*table.Batch)
 	b.Reset(r.chunk.Rows, w.bound.Wants, w.plan.Kernel.Added())
 	if err := w.src.Decode(r.chunk, b); err != nil {
@@ -280,6 +282,9 @@ func (w *work) chunk(worker int, r *result) error {
 	scratch := w.scratch.Get().(*columns.Scratch)
 	w.bound.Run(b, scratch, w.tallies[worker])
 	w.scratch.Put(scratch)
+	if err := ctx.Err(); err != nil {
+		return err
+	}
 	piece, err := w.sink.Encode(r.chunk, b)
 	r.batch, r.piece = b, piece
 	return err
