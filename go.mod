@@ -8,7 +8,9 @@ require (
 	codeberg.org/go-pdf/fpdf v0.11.1 // indirect
 	git.sr.ht/~sbinet/gg v0.7.0 // indirect
 	github.com/ajstarks/svgo v0.0.0-20211024235047-1546f124cd8b // indirect
+	// before v1.2.7: GO-2026-6888
 	github.com/andybalholm/brotli v1.3.0 // indirect
+	// v15 loses BYTE_STREAM_SPLIT columns without an error; pages are read as v18.8.0 has it
 	github.com/apache/arrow-go/v18 v18.8.0 // indirect
 	github.com/apache/thrift v0.24.0 // indirect
 	github.com/bmatcuk/doublestar/v4 v4.10.4 // indirect
@@ -24,6 +26,7 @@ require (
 	github.com/google/uuid v1.6.0 // indirect
 	github.com/gowebpki/jcs v1.0.2 // indirect
 	github.com/inconshreveable/mousetrap v1.1.0 // indirect
+	// before v1.20.2: GO-2026-6865; before v1.18.7: GO-2026-5841
 	github.com/klauspost/compress v1.20.4 // indirect
 	github.com/klauspost/cpuid/v2 v2.4.0 // indirect
 	github.com/mitchellh/colorstring v0.0.0-20190213212951-d06e56a500db // indirect
