@@ -144,6 +144,9 @@ func (p *Plan) expand(pattern string) ([]Unit, error) {
 		if info.IsDir() {
 			return nil, fmt.Errorf("%s is a directory: name the files in it, as %s", pattern, filepath.Join(pattern, "*.csv"))
 		}
+		if !info.Mode().IsRegular() { // opening a pipe that nobody writes to would wait for ever
+			return nil, fmt.Errorf("%s is no regular file: give a stream through standard input, as -", pattern)
+		}
 		p.literal[pattern] = true
 		return []Unit{{ID: filepath.Base(pattern), Input: pattern, Size: info.Size()}}, nil
 	}

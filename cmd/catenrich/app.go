@@ -79,6 +79,7 @@ func (a *app) untilSignal() (context.Context, func()) {
 	go func() {
 		select {
 		case a.caught = <-signals:
+			signal.Stop(signals) // a second one ends the process at once
 			cancel()
 			a.stdin.Close()
 		case <-done:

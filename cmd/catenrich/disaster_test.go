@@ -393,3 +393,27 @@ func eight(t *testing.T, args ...string) map[int]int {
 	}
 	return codes
 }
+
+// TestNoRegularFile: a pipe that nobody writes to, and a device without end,
+// are refused before they are opened.
+func TestNoRegularFile(t *testing.T) {
+	t.Chdir(t.TempDir())
+	if err := unix.Mkfifo("pipe.csv", 0o600); err != nil {
+		t.Skip(err)
+	}
+	if err := os.Symlink("/dev/zero", "zero.csv"); err != nil {
+		t.Fatal(err)
+	}
+	for _, input := range []string{"pipe.csv", "zero.csv"} {
+		r := runHere(t, []string{"run", input, "--redshift", "z", "--add", "times", "-o", "out.csv"}, nil)
+		if r.code != 66 || !strings.Contains(r.stderr, input+" is no regular file") {
+			t.Errorf("%s: exit %d, want 66\n%s", input, r.code, r.stderr)
+		}
+	}
+	if err := os.Symlink("/dev/zero", "zero.toml"); err != nil {
+		t.Fatal(err)
+	}
+	if r := runHere(t, []string{"run", "zero.toml"}, nil); r.code != 66 || !strings.Contains(r.stderr, "zero.toml") {
+		t.Errorf("a job file without end: exit %d, want 66\n%s", r.code, r.stderr)
+	}
+}

@@ -279,7 +279,7 @@ func (v *flagValue) Set(value string) error {
 func (j *jobFlags) file(args []string) (*job.File, error) {
 	f := new(job.File)
 	if len(args) == 1 && strings.HasSuffix(args[0], ".toml") {
-		text, err := os.ReadFile(args[0])
+		text, err := job.Read(args[0])
 		if err != nil {
 			return nil, fault.NoInput.Errorf("the job file cannot be read: %w", err)
 		}

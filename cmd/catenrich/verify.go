@@ -5,7 +5,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"os"
 	"text/tabwriter"
 
 	"github.com/spf13/cobra"
@@ -34,7 +33,7 @@ func (f *proofFlags) options() (prove.Options, error) {
 	if f.job == "" {
 		return o, nil
 	}
-	text, err := os.ReadFile(f.job)
+	text, err := job.Read(f.job)
 	if err != nil {
 		return o, fault.NoInput.Errorf("--job: %w", err)
 	}

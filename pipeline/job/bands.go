@@ -306,7 +306,7 @@ func (r *resolver) sideFile(path, use, name string, s *KSettings) []byte {
 	}
 	var text []byte
 	if err == nil {
-		text, err = os.ReadFile(full)
+		text, err = readAtMost(full, maxSideFile)
 	}
 	if err != nil {
 		r.refused = true
